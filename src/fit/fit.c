@@ -1,0 +1,232 @@
+#include "wane/fit.h"
+
+#include "fit/state.h"
+
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+#define WALKS_MAX 12
+
+static bool allocate(struct fit_workspace *workspace, size_t frames_max)
+{
+    struct segment *segment = &workspace->segment;
+    size_t blocks = frames_max / MOMENT_BLOCK_MAX + 128;
+    float *y = realloc(workspace->y, frames_max * sizeof *y);
+    if (y != NULL)
+        workspace->y = y;
+    float *quiet = realloc(workspace->quiet, frames_max * sizeof *quiet);
+    if (quiet != NULL)
+        workspace->quiet = quiet;
+    float *residual = realloc(workspace->residual, frames_max * sizeof *residual);
+    if (residual != NULL)
+        workspace->residual = residual;
+    double complex *pool =
+        realloc(segment->moment_pool, POLES_MAX * blocks * MOMENT_ORDERS * sizeof *pool);
+    if (pool != NULL)
+        segment->moment_pool = pool;
+    if (y == NULL || quiet == NULL || residual == NULL || pool == NULL)
+        return false;
+    segment->pool_blocks = blocks;
+    workspace->frames_max = frames_max;
+    return true;
+}
+
+struct fit_workspace *fit_workspace_create(size_t frames_max, struct error *err)
+{
+    struct fit_workspace *workspace = calloc(1, sizeof *workspace);
+    if (workspace != NULL) {
+        struct segment *segment = &workspace->segment;
+        workspace->spectrum = spectrum_create();
+        segment->table = aligned_alloc(64, MOMENT_TABLE_FLOATS * sizeof(float));
+        segment->matrix = calloc((size_t)PARAMETERS_MAX * PARAMETERS_MAX, sizeof(double));
+        segment->pair_sums = calloc((size_t)POLES_MAX * POLES_MAX, sizeof segment->pair_sums[0]);
+        if (workspace->spectrum != NULL && segment->table != NULL && segment->matrix != NULL &&
+            segment->pair_sums != NULL &&
+            allocate(workspace, frames_max < 4096 ? 4096 : frames_max))
+            return workspace;
+    }
+    fit_workspace_destroy(workspace);
+    error_set(err, ERROR_MEMORY,
+              "no memory for fitting strikes of %zu samples: close other programs", frames_max);
+    return NULL;
+}
+
+void fit_workspace_destroy(struct fit_workspace *workspace)
+{
+    if (workspace == NULL)
+        return;
+    spectrum_destroy(workspace->spectrum);
+    free(workspace->y);
+    free(workspace->quiet);
+    free(workspace->residual);
+    free(workspace->segment.moment_pool);
+    free(workspace->segment.table);
+    free(workspace->segment.matrix);
+    free(workspace->segment.pair_sums);
+    free(workspace);
+}
+
+void fit_settings_describe(const struct fit_settings *settings, char *out, size_t out_size)
+{
+    snprintf(out, out_size,
+             "f_low_hz=%.9g f_high_hz=%.9g coupling_hz=%.9g not_exponential=%.9g gliding=%.9g "
+             "modes_max=%u clock_ppm=%.9g",
+             settings->f_low_hz, settings->f_high_hz, settings->coupling_hz,
+             settings->not_exponential, settings->gliding, settings->modes_max,
+             settings->clock_ppm);
+}
+
+static bool resolve_settings(const struct fit_settings *given, double rate_hz,
+                             struct fit_settings *out, struct error *err)
+{
+    *out = *given;
+    if (out->f_low_hz <= 0)
+        out->f_low_hz = 20;
+    if (out->f_high_hz <= 0)
+        out->f_high_hz = 0.46 * rate_hz;
+    if (out->not_exponential <= 0)
+        out->not_exponential = 0.05;
+    if (out->gliding <= 0)
+        out->gliding = 1e-4;
+    if (out->modes_max == 0)
+        out->modes_max = 10;
+    if (out->modes_max > READING_MODES_MAX)
+        return error_set(err, ERROR_USAGE,
+                         "at most %d modes can be read at once, not %u: ask for fewer",
+                         READING_MODES_MAX, out->modes_max);
+    if (out->f_low_hz >= out->f_high_hz)
+        return error_set(
+            err, ERROR_USAGE,
+            "lowest frequency %.6g Hz is not below the highest, %.6g Hz: give a wider range",
+            out->f_low_hz, out->f_high_hz);
+    return true;
+}
+
+static bool check_samples(const struct strike *strike, struct error *err)
+{
+    if (strike->frame_count == 0 || strike->trigger >= strike->frame_count)
+        return error_set(err, ERROR_DATA, "the strike holds no samples after its trigger");
+    for (size_t n = 0; n < strike->frame_count; n++) {
+        if (!isfinite(strike->samples[n]))
+            return error_set(err, ERROR_DATA, "sample %zu of the strike is not a number", n);
+    }
+    return true;
+}
+
+static void set_levels(struct fit *fit, struct reading *reading)
+{
+    float peak = 0;
+    for (size_t n = fit->blow > 8 ? fit->blow - 8 : 0; n < fit->end; n++)
+        peak = fmaxf(peak, fabsf(fit->strike->samples[n]));
+    reading->peak_dbfs = 20 * log10(fmax((double)peak, 1e-10));
+    reading->noise_dbfs = 10 * log10(2 * fit->noise.variance);
+    reading->onset_frame = fit->onset;
+    reading->window_begin_frame = (double)fit->begin;
+    reading->window_end_frame = (double)fit->end;
+    double strongest = -INFINITY;
+    for (unsigned i = 0; i < reading->mode_count; i++)
+        strongest = fmax(strongest, reading->modes[i].level_dbfs);
+    reading->snr_db = reading->mode_count > 0 ? strongest - reading->noise_dbfs : (double)NAN;
+}
+
+/* Strongest first; a doublet's halves share a number and are told apart by frequency. */
+static void sort_and_label(struct reading *reading)
+{
+    struct mode *modes = reading->modes;
+    unsigned count = reading->mode_count;
+    for (unsigned i = 1; i < count; i++) {
+        struct mode mode = modes[i];
+        unsigned at = i;
+        for (; at > 0 && modes[at - 1].level_dbfs < mode.level_dbfs; at--)
+            modes[at] = modes[at - 1];
+        modes[at] = mode;
+    }
+    unsigned number = 0;
+    for (unsigned i = 0; i < count; i++)
+        modes[i].label[0] = '\0';
+    for (unsigned i = 0; i < count; i++) {
+        if (modes[i].label[0] != '\0')
+            continue;
+        number++;
+        unsigned partner = i;
+        for (unsigned k = i + 1; k < count && partner == i; k++) {
+            double width = (modes[i].decay_per_s + modes[k].decay_per_s) / (2 * WANE_PI);
+            if (modes[k].label[0] == '\0' && fabs(modes[i].f_hz - modes[k].f_hz) < 5 * width)
+                partner = k;
+        }
+        if (partner == i) {
+            snprintf(modes[i].label, sizeof modes[i].label, "%u", number);
+        } else {
+            bool is_lower = modes[i].f_hz < modes[partner].f_hz;
+            snprintf(modes[i].label, sizeof modes[i].label, "%u%c", number, is_lower ? 'a' : 'b');
+            snprintf(modes[partner].label, sizeof modes[i].label, "%u%c", number,
+                     is_lower ? 'b' : 'a');
+        }
+    }
+}
+
+static void list_tones(const struct fit *fit, struct reading *reading)
+{
+    reading->tone_count = 0;
+    for (unsigned k = 0; k < fit->segment->pole_count; k++) {
+        const struct pole *pole = &fit->segment->poles[k];
+        if (pole->kind != POLE_TONE || reading->tone_count == READING_TONES_MAX)
+            continue;
+        reading->tones[reading->tone_count++] = (struct steady_tone){
+            cimag(pole->p) * fit->strike->rate_hz / (2 * WANE_PI), 20 * log10(cabs(pole->c))};
+    }
+}
+
+bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
+                const struct fit_settings *settings, struct reading *out_reading, struct error *err)
+{
+    struct fit fit = {.workspace = workspace, .strike = strike, .segment = &workspace->segment};
+    if (!resolve_settings(settings, strike->rate_hz, &fit.settings, err) ||
+        !check_samples(strike, err))
+        return false;
+    if (strike->frame_count > workspace->frames_max && !allocate(workspace, strike->frame_count))
+        return error_set(err, ERROR_MEMORY, "no memory to fit a strike of %zu samples",
+                         strike->frame_count);
+    struct reading reading;
+    reading_init(&reading);
+    fit.w_low = 2 * WANE_PI * fit.settings.f_low_hz / strike->rate_hz;
+    fit.w_high = 2 * WANE_PI * fit.settings.f_high_hz / strike->rate_hz;
+    window_prepare(&fit);
+    fit.begin = window_first_begin(&fit);
+    bool has_modes = candidates_fit(&fit);
+    enum walk walk = WALK_MOVED;
+    for (int i = 0; has_modes && walk == WALK_MOVED && i < WALKS_MAX; i++) {
+        walk = window_walk_back(&fit);
+        if (walk != WALK_ENDED)
+            has_modes = candidates_fit(&fit);
+    }
+    uncertainty_fill(&fit, &reading);
+    sort_and_label(&reading);
+    list_tones(&fit, &reading);
+    set_levels(&fit, &reading);
+    verdict_judge(&fit, &reading);
+    *out_reading = reading;
+    return true;
+}
+
+void fit_carry(const struct strike *strike, const struct reading *reading, struct strike *next)
+{
+    next->carried_count = 0;
+    double rate = strike->rate_hz;
+    double from = (double)strike->first_frame + reading->onset_frame;
+    double t = ((double)next->first_frame - from) / rate;
+    if (!(t >= 0) || next->rate_hz != rate || next->channel != strike->channel)
+        return;
+    double floor_amplitude = pow(10, (reading->noise_dbfs - 20) / 20);
+    for (unsigned i = 0; i < reading->mode_count && next->carried_count < STRIKE_CARRIED_MAX; i++) {
+        const struct mode *mode = &reading->modes[i];
+        double amplitude = pow(10, mode->level_dbfs / 20) * exp(-mode->decay_per_s * t);
+        if (!(amplitude > floor_amplitude))
+            continue;
+        double phase = fmod(mode->phase_rad + 2 * WANE_PI * fmod(mode->f_hz * t, 1.0), 2 * WANE_PI);
+        next->carried[next->carried_count++] =
+            (struct carried_mode){mode->f_hz, mode->decay_per_s, amplitude, phase};
+    }
+}

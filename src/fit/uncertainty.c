@@ -1,0 +1,64 @@
+/* From poles to modes with uncertainties. Formulas: contract.md's words; propagation JCGM 100:2008
+ * (GUM) equation (13). */
+#include "fit/matrix.h"
+#include "fit/state.h"
+
+#include <math.h>
+#include <string.h>
+
+static void fill_mode(struct mode *mode, double f_hz, double decay_per_s, double f_u_hz,
+                      double decay_u_per_s, double cov)
+{
+    double w = 2 * WANE_PI * f_hz;
+    double wn = sqrt(w * w + decay_per_s * decay_per_s);
+    mode->f_hz = f_hz;
+    mode->decay_per_s = decay_per_s;
+    mode->f_u_hz = f_u_hz;
+    mode->decay_u_per_s = decay_u_per_s;
+    mode->f_decay_cov = cov;
+    mode->natural_f_hz = wn / (2 * WANE_PI);
+    mode->q = wn / (2 * decay_per_s);
+    mode->zeta = decay_per_s / wn;
+    /* dq/dw = w / (2 a wn), dq/da = -w^2 / (2 a^2 wn); zeta = 1 / (2 q). */
+    double by_w = w / (2 * decay_per_s * wn) * 2 * WANE_PI;
+    double by_a = -w * w / (2 * decay_per_s * decay_per_s * wn);
+    double variance = by_w * by_w * f_u_hz * f_u_hz + by_a * by_a * decay_u_per_s * decay_u_per_s +
+                      2 * by_w * by_a * cov;
+    mode->q_u = sqrt(fmax(variance, 0));
+    mode->zeta_u = mode->q_u / (2 * mode->q * mode->q);
+    mode->t60_s = log(1000) / decay_per_s;
+    mode->t60_u_s = mode->t60_s * decay_u_per_s / decay_per_s;
+}
+
+static void fill_from_pole(const struct fit *fit, const struct pole *pole, double var_a,
+                           double var_w, double cov_aw, struct mode *mode)
+{
+    double rate = fit->strike->rate_hz * (1 + fit->settings.clock_ppm * 1e-6);
+    double density = noise_density(&fit->noise, cimag(pole->p));
+    fill_mode(mode, cimag(pole->p) * rate / (2 * WANE_PI), -creal(pole->p) * rate,
+              sqrt(density * var_w) * rate / (2 * WANE_PI), sqrt(density * var_a) * rate,
+              density * cov_aw * rate * rate / (2 * WANE_PI));
+    double complex c = pole->c * cexp(-pole->p * ((double)fit->begin - fit->onset));
+    mode->level_dbfs = 20 * log10(cabs(c));
+    mode->phase_rad = carg(c);
+}
+
+void uncertainty_fill(struct fit *fit, struct reading *reading)
+{
+    struct segment *segment = fit->segment;
+    struct parameter parameters[PARAMETERS_MAX];
+    double scale[PARAMETERS_MAX], column[PARAMETERS_MAX];
+    unsigned n = refine_information(segment, parameters, scale);
+    reading->mode_count = 0;
+    for (unsigned i = 0; i + 1 < n; i++) {
+        const struct pole *pole = &segment->poles[parameters[i].pole];
+        if (parameters[i].what != PARAMETER_A || pole->kind != POLE_RING || pole->is_carried ||
+            reading->mode_count == READING_MODES_MAX)
+            continue;
+        matrix_inverse_column(segment->matrix, n, scale, i, column);
+        double var_a = column[i], cov_aw = column[i + 1];
+        matrix_inverse_column(segment->matrix, n, scale, i + 1, column);
+        fill_from_pole(fit, pole, var_a, column[i + 1], cov_aw,
+                       &reading->modes[reading->mode_count++]);
+    }
+}

@@ -1,0 +1,281 @@
+/* The span that is fitted: noise before the strike, where the blow begins, where the fit may begin.
+ */
+#include "fit/state.h"
+
+#include "fit/matrix.h"
+
+#include <math.h>
+#ifdef FIT_DEBUG
+#include <stdio.h>
+#endif
+#include <string.h>
+
+/* Least variance a sample: the grain of 24-bit samples, step^2 / 12. */
+#define GRAIN_24_BIT 1.18e-15
+
+/* Takes carried modes out of residual [0, count) as predicted from the strike before. */
+static void subtract_carried(const struct fit *fit, float *y, size_t count)
+{
+    const struct strike *strike = fit->strike;
+    for (unsigned i = 0; i < strike->carried_count; i++) {
+        const struct carried_mode *mode = &strike->carried[i];
+        double complex p =
+            -mode->decay_per_s / strike->rate_hz + J * 2 * WANE_PI * mode->f_hz / strike->rate_hz;
+        struct pole pole = {.p = p};
+        moments_subtract(y, pole_length(&pole, count), p,
+                         mode->amplitude * cexp(J * mode->phase_rad), fit->segment->table);
+    }
+}
+
+/* Steady tones of the quiet span: found, refined together, taken out of `quiet`. */
+static void find_tones(struct fit *fit, float *quiet, size_t count)
+{
+    struct fit_workspace *workspace = fit->workspace;
+    struct segment *segment = fit->segment;
+    segment_begin(segment, quiet, count);
+    for (int round = 0; round < 3 && segment->pole_count < READING_TONES_MAX; round++) {
+        double w[READING_TONES_MAX];
+        memcpy(workspace->residual, quiet, count * sizeof *quiet);
+        for (unsigned k = 0; k < segment->pole_count; k++)
+            moments_subtract(workspace->residual, count, segment->poles[k].p, segment->poles[k].c,
+                             segment->table);
+        unsigned found =
+            spectrum_find_lines(workspace->spectrum, workspace->residual, count, fit->w_low / 2,
+                                fit->w_high, READING_TONES_MAX - segment->pole_count, w);
+        if (found == 0)
+            break;
+        for (unsigned i = 0; i < found; i++)
+            segment_add_pole(segment, POLE_TONE, J * w[i]);
+        if (!refine_poles(segment, 12))
+            break;
+    }
+    fit->tone_count = 0;
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        fit->tones_w[fit->tone_count++] = cimag(segment->poles[k].p);
+        fit->tone_variance += creal(segment->poles[k].c * conj(segment->poles[k].c)) / 2;
+        moments_subtract(quiet, count, segment->poles[k].p, segment->poles[k].c, segment->table);
+    }
+}
+
+/* The first sample that stands clear of the noise, from 5 ms before the trigger on. */
+static size_t find_blow(const struct fit *fit)
+{
+    const struct strike *strike = fit->strike;
+    size_t reach = (size_t)(0.005 * strike->rate_hz);
+    size_t from = strike->trigger > reach ? strike->trigger - reach : 0;
+    size_t to = strike->trigger + reach < strike->frame_count ? strike->trigger + reach
+                                                              : strike->frame_count;
+    double limit = 25 * (fit->noise.variance + fit->tone_variance);
+    const float *y = fit->workspace->y;
+    for (size_t n = from; n < to; n++) {
+        if ((double)y[n] * (double)y[n] > limit)
+            return n < strike->trigger + reach / 4 ? n : strike->trigger;
+    }
+    return strike->trigger < strike->frame_count ? strike->trigger : strike->frame_count - 1;
+}
+
+/* The mean of the quiet span is the card's offset, not part of the strike. */
+static void take_offset_out(struct fit *fit)
+{
+    const struct strike *strike = fit->strike;
+    double sum = 0;
+    for (size_t n = 0; n < fit->quiet_end; n++)
+        sum += (double)strike->samples[n];
+    float offset = fit->quiet_end > 0 ? (float)(sum / (double)fit->quiet_end) : 0;
+    for (size_t n = 0; n < strike->frame_count; n++)
+        fit->workspace->y[n] = strike->samples[n] - offset;
+}
+
+void window_prepare(struct fit *fit)
+{
+    const struct strike *strike = fit->strike;
+    struct fit_workspace *workspace = fit->workspace;
+    size_t guard = (size_t)(0.005 * strike->rate_hz);
+    fit->quiet_end = strike->trigger > guard ? strike->trigger - guard : 0;
+    fit->end = strike->frame_count;
+    take_offset_out(fit);
+    float *quiet = workspace->quiet;
+    memcpy(quiet, workspace->y, fit->quiet_end * sizeof *quiet);
+    subtract_carried(fit, quiet, fit->quiet_end);
+    find_tones(fit, quiet, fit->quiet_end);
+    spectrum_measure_noise(workspace->spectrum, quiet, fit->quiet_end, GRAIN_24_BIT, &fit->noise);
+    if (!fit->noise.is_measured || fit->noise.variance < 2 * GRAIN_24_BIT) {
+        size_t tail = (strike->frame_count - strike->trigger) / 4;
+        size_t from = strike->frame_count - tail;
+        spectrum_measure_noise(workspace->spectrum, workspace->y + from, tail, GRAIN_24_BIT,
+                               &fit->noise);
+    }
+    fit->blow = find_blow(fit);
+    fit->onset = (double)fit->blow;
+}
+
+/* Well after the blow, unless the ring is too quick for that: the latest of the steps at which a
+ * tenth of the energy is still to come. */
+size_t window_first_begin(const struct fit *fit)
+{
+    static const double steps_s[] = {0.010, 0.005, 0.0025, 0.0012, 0.0006, 0.0003, 0.00015};
+    const struct strike *strike = fit->strike;
+    const float *y = fit->workspace->y;
+    double rate = strike->rate_hz;
+    double total = 0, rest = 0, noise = fit->noise.variance;
+    size_t first = fit->blow + (size_t)(steps_s[6] * rate) + 1;
+    size_t last = fit->blow + (size_t)(0.1 * rate);
+    last = last < fit->end ? last : fit->end;
+    for (size_t n = first; n < last; n++)
+        total += (double)y[n] * (double)y[n] - noise;
+    for (size_t i = 0; i + 1 < sizeof steps_s / sizeof steps_s[0]; i++) {
+        size_t begin = fit->blow + (size_t)(steps_s[i] * rate) + 1;
+        rest = 0;
+        for (size_t n = begin; n < last; n++)
+            rest += (double)y[n] * (double)y[n] - noise;
+        if (rest > 0.1 * total && begin + 32 < fit->end)
+            return begin;
+    }
+    return first + 32 < fit->end ? first : fit->blow;
+}
+
+/* Model at `offset` samples from the segment's first (negative: before it), tones and all. */
+static double model_at(const struct segment *segment, double offset, bool with_rings)
+{
+    double sum = 0;
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        const struct pole *pole = &segment->poles[k];
+        bool is_old = pole->kind == POLE_TONE || pole->is_carried;
+        if (with_rings || is_old)
+            sum += creal(pole->c * cexp(pole->p * offset));
+    }
+    return sum;
+}
+
+/* Variance of the model's prediction at `offset`, by the fit's own covariance. Needs what
+ * refine_information left. */
+static double prediction_variance(const struct segment *segment, const struct parameter *parameters,
+                                  unsigned n, const double *scale, const double *density,
+                                  double offset)
+{
+    double gradient[PARAMETERS_MAX], x[PARAMETERS_MAX];
+    for (unsigned i = 0; i < n; i++) {
+        const struct pole *pole = &segment->poles[parameters[i].pole];
+        double complex basis = cexp(pole->p * offset) * (parameters[i].order > 0 ? offset : 1);
+        gradient[i] = creal(parameters[i].d * basis) * sqrt(density[parameters[i].pole]);
+        x[i] = gradient[i];
+    }
+    matrix_solve(segment->matrix, n, scale, x);
+    double sum = 0;
+    for (unsigned i = 0; i < n; i++)
+        sum += gradient[i] * x[i];
+    return sum;
+}
+
+/* The onset as the change point: before it silence (and tones) explains the samples, after it the
+ * ring. Least squares over [from, to). out_excess: the worst of the two sides' mean squares over
+ * `near` samples, in units of the noise. */
+static size_t change_point(const struct fit *fit, size_t from, size_t to, double *out_excess)
+{
+    const struct segment *segment = fit->segment;
+    const float *y = fit->workspace->y;
+    double gain = 0, best = 0;
+    size_t at = to;
+    for (size_t n = to; n-- > from;) {
+        double offset = (double)n - (double)fit->begin;
+        double old = model_at(segment, offset, false), all = model_at(segment, offset, true);
+        double ring = (double)y[n] - all, silence = (double)y[n] - old;
+        gain += silence * silence - ring * ring;
+        if (gain > best) {
+            best = gain;
+            at = n;
+        }
+    }
+    size_t near = 16;
+    double worst = 0;
+    for (int side = 0; side < 2; side++) {
+        double sum = 0;
+        for (size_t i = 0; i < near; i++) {
+            size_t n = side == 0 ? at - 1 - i : at + i;
+            if (n >= fit->strike->frame_count || n >= fit->end)
+                continue;
+            double r = (double)y[n] - model_at(segment, (double)n - (double)fit->begin, side == 1);
+            sum += r * r;
+        }
+        worst = fmax(worst, sum / (double)near);
+    }
+    *out_excess = worst / fit->noise.variance;
+    return at;
+}
+
+/* Mean square of the samples [from, from + count) less the model, with or without the ring. */
+static double mean_square(const struct fit *fit, size_t from, size_t count, bool with_rings)
+{
+    double sum = 0;
+    for (size_t n = from; n < from + count; n++) {
+        double offset = (double)n - (double)fit->begin;
+        double r = (double)fit->workspace->y[n] - model_at(fit->segment, offset, with_rings);
+        sum += r * r;
+    }
+    return sum / (double)count;
+}
+
+/* Does the ring begin near `at` out of silence, with no blow between? Then that is the onset. */
+static bool find_clean_onset(struct fit *fit, size_t at, size_t block)
+{
+    size_t from = at > 4 * block ? at - 4 * block : 0;
+    size_t to = at + 2 * block < fit->end ? at + 2 * block : fit->end;
+    double excess = 0;
+    size_t onset = change_point(fit, from, to, &excess);
+#ifdef FIT_DEBUG
+    fprintf(stderr, "  clean? at %zu from %zu to %zu onset %zu excess %.2f\n", at, from, to, onset,
+            excess);
+#endif
+    if (onset <= from || onset >= to || excess > 1 + 5 * sqrt(2.0 / 16))
+        return false;
+    fit->onset = (double)onset - 0.5;
+    fit->is_clean_onset = true;
+    fit->begin = onset;
+    return true;
+}
+
+enum walk window_walk_back(struct fit *fit)
+{
+    const struct segment *segment = fit->segment;
+    struct parameter parameters[PARAMETERS_MAX];
+    double scale[PARAMETERS_MAX], density[POLES_MAX];
+    unsigned n = refine_information(fit->segment, parameters, scale);
+    if (n == 0)
+        return WALK_ENDED;
+    for (unsigned k = 0; k < segment->pole_count; k++)
+        density[k] = noise_density(&fit->noise, cimag(segment->poles[k].p));
+    size_t block = (size_t)(0.00025 * fit->strike->rate_hz);
+    block = block < 8 ? 8 : block;
+    double limit = 1 + 5 * sqrt(2.0 / (double)block), noise = fit->noise.variance;
+    size_t reach = (size_t)(0.006 * fit->strike->rate_hz);
+    size_t least = fit->blow > reach ? fit->blow - reach : 0;
+    size_t at = fit->begin;
+    while (at >= least + block) {
+        double middle = (double)at - (double)block / 2 - (double)fit->begin;
+        double predicted = prediction_variance(segment, parameters, n, scale, density, middle);
+#ifdef FIT_DEBUG
+        fprintf(stderr, "  walk at %zu pred/noise %.3g ring %.3g silence %.3g limit %.3g\n", at,
+                predicted / noise, mean_square(fit, at - block, block, true) / noise,
+                mean_square(fit, at - block, block, false) / noise, limit);
+#endif
+        bool fits_silence = mean_square(fit, at - block, block, false) < limit * noise;
+        if (fits_silence && find_clean_onset(fit, at, block))
+            return WALK_CLEAN;
+        /* The prediction is wrong by one and the same amount all over the block: its square, not a
+         * mean of squares, is allowed for, at 3.5 sigma. */
+        if (mean_square(fit, at - block, block, true) > limit * noise + 12 * predicted)
+            break;
+        /* Where the prediction is worse than the noise the test has lost its power: the fit must
+         * take in what has been gained before it goes on. */
+        at -= block;
+        if (predicted > noise && !fits_silence) {
+            fit->begin = at;
+            return WALK_MOVED;
+        }
+    }
+    if (find_clean_onset(fit, at, block))
+        return WALK_CLEAN;
+    bool has_moved = at < fit->begin;
+    fit->begin = at;
+    return has_moved ? WALK_MOVED : WALK_ENDED;
+}
