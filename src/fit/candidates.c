@@ -92,7 +92,7 @@ static int find_weakest(struct fit *fit, double *out_presence)
         const struct pole *pole = &segment->poles[k];
         while (n > 0 && i < n && parameters[i].pole < k)
             i++;
-        if (pole->kind != POLE_RING || pole->is_carried)
+        if (pole->kind != POLE_RING)
             continue;
         double energy = pole_energy(pole, segment->frame_count);
         bool is_nothing =
@@ -132,7 +132,7 @@ static unsigned ring_count(const struct segment *segment)
 {
     unsigned count = 0;
     for (unsigned k = 0; k < segment->pole_count; k++)
-        count += segment->poles[k].kind == POLE_RING && !segment->poles[k].is_carried;
+        count += segment->poles[k].kind == POLE_RING;
     return count;
 }
 
@@ -142,12 +142,18 @@ static void add_known_poles(struct fit *fit)
     for (unsigned i = 0; i < fit->tone_count; i++)
         segment_add_pole(fit->segment, POLE_TONE, J * fit->tones_w[i]);
     for (unsigned i = 0; i < strike->carried_count; i++) {
-        double complex p =
-            (-strike->carried[i].decay_per_s + J * 2 * WANE_PI * strike->carried[i].f_hz) /
-            strike->rate_hz;
-        if (segment_add_pole(fit->segment, POLE_RING, p))
-            fit->segment->poles[fit->segment->pole_count - 1].is_carried = true;
+        const struct carried_mode *mode = &strike->carried[i];
+        double complex p = (-mode->decay_per_s + J * 2 * WANE_PI * mode->f_hz) / strike->rate_hz;
+        if (!segment_add_pole(fit->segment, POLE_RING, p))
+            break;
+        struct pole *pole = &fit->segment->poles[fit->segment->pole_count - 1];
+        pole->is_carried = true;
+        pole->tail = mode->amplitude * cexp(J * mode->phase_rad + p * (double)fit->begin);
     }
+    if (fit->settings.coupling_hz > 0 &&
+        segment_add_pole(fit->segment, POLE_REAL,
+                         -2 * WANE_PI * fit->settings.coupling_hz / strike->rate_hz))
+        fit->segment->poles[fit->segment->pole_count - 1].is_fixed = true;
     if (fit->segment->pole_count > 0)
         refine_amplitudes(fit->segment);
 }
@@ -162,8 +168,11 @@ static unsigned search_round(struct fit *fit)
         spectrum_search(fit->workspace->spectrum, fit->workspace->residual, segment->frame_count,
                         &fit->noise, fit->w_low, fit->w_high, threshold, candidates);
     struct candidate heavy;
-    if (lowq_search(fit, &heavy) && heavy.statistic > threshold &&
+    bool is_real = false;
+    if (lowq_search(fit, &heavy, &is_real) && heavy.statistic > threshold &&
         (found == 0 || heavy.statistic > 1.1 * candidates[0].statistic)) {
+        if (is_real)
+            return segment_add_pole(segment, POLE_REAL, heavy.p) ? 1 : 0;
         candidates[0] = heavy; /* the others may be its skirts: they wait for the next round */
         found = 1;
     }
@@ -232,7 +241,7 @@ static bool drop_blow_poles(struct fit *fit)
     for (unsigned k = segment->pole_count; k-- > 0;) {
         const struct pole *pole = &segment->poles[k];
         bool is_quick = -creal(pole->p) * BLOW_S * fit->strike->rate_hz > 1;
-        if (pole->kind != POLE_RING || pole->is_carried || !is_quick ||
+        if (pole->kind != POLE_RING || !is_quick ||
             pole_energy(pole, segment->frame_count) >= strongest || is_found_again(fit, k))
             continue;
         segment_remove_pole(segment, k);

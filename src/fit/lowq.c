@@ -33,7 +33,19 @@ static double explained_by(const float *y, size_t count, double complex p, doubl
     return u * data[0] + v * data[1];
 }
 
-bool lowq_search(struct fit *fit, struct candidate *out)
+/* The same for c exp(-a n), c real. */
+static double explained_by_real(const float *y, size_t count, double a)
+{
+    double gram = 0, data = 0, z = 1, step = exp(-a);
+    for (size_t n = 0; n < count; n++) {
+        gram += z * z;
+        data += (double)y[n] * z;
+        z *= step;
+    }
+    return data * data / gram;
+}
+
+bool lowq_search(struct fit *fit, struct candidate *out, bool *out_is_real)
 {
     const struct segment *segment = fit->segment;
     float *y = fit->workspace->residual; /* thinned in place, level by level */
@@ -61,6 +73,20 @@ bool lowq_search(struct fit *fit, struct candidate *out)
                 /* An average of `thin` samples stands for their middle. */
                 *out = (struct candidate){p, c * cexp(-p * ((double)thin - 1) / 2), energy / 2};
             }
+        }
+    }
+    /* A real pole has two parameters less: it is preferred where it does nearly as well. */
+    *out_is_real = false;
+    double slowest = 2 * WANE_PI * 0.3 / fit->strike->rate_hz;
+    for (double a = slowest; a < w_low * 2; a *= 1.5) {
+        size_t length = (size_t)(6 / (a * (double)thin)) + 4;
+        length = length < count ? length : count;
+        double energy = explained_by_real(y, length, a * (double)thin) * (double)thin;
+        energy /= noise_density(&fit->noise, 0);
+        if (energy > 0.9 * best) {
+            best = fmax(best, energy / 0.9);
+            *out = (struct candidate){-a, 0, energy / 2};
+            *out_is_real = true;
         }
     }
     return best > 0;

@@ -27,10 +27,11 @@ enum pole_kind {
 
 struct pole {
     enum pole_kind kind;
-    bool is_carried;  /* of an earlier strike: modelled, not reported */
-    bool is_fixed;    /* p is known, only c is free */
-    double complex p; /* per sample */
-    double complex c; /* at the segment's first sample */
+    bool is_carried;     /* an earlier strike left this mode ringing: `tail` of it */
+    bool is_fixed;       /* p is known, only c is free */
+    double complex p;    /* per sample */
+    double complex c;    /* at the segment's first sample */
+    double complex tail; /* what the earlier strike predicts for c */
 };
 
 /* Length, in samples, over which a pole's term is kept: exp(-12) = 6e-6 beyond is nothing beside

@@ -48,9 +48,9 @@ bool candidates_fit(struct fit *fit);
 /* residual = samples - model over the fitted span. */
 void candidates_residual(struct fit *fit);
 
-/* Best heavily damped mode of the residual (which it spoils): lowq.c. statistic as in spectrum.h.
- * false when there is nothing at all. */
-bool lowq_search(struct fit *fit, struct candidate *out);
+/* Best heavily damped mode, or slow real decay (the input's AC coupling), of the residual, which it
+ * spoils: lowq.c. statistic as in spectrum.h. false when there is nothing at all. */
+bool lowq_search(struct fit *fit, struct candidate *out, bool *out_is_real);
 
 /* uncertainty.c: fills modes (unsorted, unlabelled) with values and uncertainties at the onset. */
 void uncertainty_fill(struct fit *fit, struct reading *reading);

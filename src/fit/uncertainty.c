@@ -38,9 +38,19 @@ static void fill_from_pole(const struct fit *fit, const struct pole *pole, doubl
     fill_mode(mode, cimag(pole->p) * rate / (2 * WANE_PI), -creal(pole->p) * rate,
               sqrt(density * var_w) * rate / (2 * WANE_PI), sqrt(density * var_a) * rate,
               density * cov_aw * rate * rate / (2 * WANE_PI));
-    double complex c = pole->c * cexp(-pole->p * ((double)fit->begin - fit->onset));
+    double complex c = (pole->c - pole->tail) * cexp(-pole->p * ((double)fit->begin - fit->onset));
     mode->level_dbfs = 20 * log10(cabs(c));
     mode->phase_rad = carg(c);
+}
+
+/* A carried mode belongs to this strike too when it is not what the earlier one left; modes below
+ * or above the range are fitted and left out. */
+static bool is_of_this_strike(const struct fit *fit, const struct pole *pole)
+{
+    double w = cimag(pole->p);
+    if (w < fit->w_low || w > fit->w_high)
+        return false;
+    return !pole->is_carried || cabs(pole->c - pole->tail) > 0.1 * cabs(pole->tail);
 }
 
 void uncertainty_fill(struct fit *fit, struct reading *reading)
@@ -52,8 +62,8 @@ void uncertainty_fill(struct fit *fit, struct reading *reading)
     reading->mode_count = 0;
     for (unsigned i = 0; i + 1 < n; i++) {
         const struct pole *pole = &segment->poles[parameters[i].pole];
-        if (parameters[i].what != PARAMETER_A || pole->kind != POLE_RING || pole->is_carried ||
-            reading->mode_count == READING_MODES_MAX)
+        if (parameters[i].what != PARAMETER_A || pole->kind != POLE_RING ||
+            !is_of_this_strike(fit, pole) || reading->mode_count == READING_MODES_MAX)
             continue;
         matrix_inverse_column(segment->matrix, n, scale, i, column);
         double var_a = column[i], cov_aw = column[i + 1];

@@ -109,29 +109,26 @@ void window_prepare(struct fit *fit)
     fit->onset = (double)fit->blow;
 }
 
-/* Well after the blow, unless the ring is too quick for that: the latest of the steps at which a
- * tenth of the energy is still to come. */
+/* Well after the blow, unless the ring is too quick for that: the latest of the steps 10, 5, 2.5
+ * ... ms at which a tenth of the energy is still to come. */
 size_t window_first_begin(const struct fit *fit)
 {
-    static const double steps_s[] = {0.010, 0.005, 0.0025, 0.0012, 0.0006, 0.0003, 0.00015};
-    const struct strike *strike = fit->strike;
     const float *y = fit->workspace->y;
-    double rate = strike->rate_hz;
-    double total = 0, rest = 0, noise = fit->noise.variance;
-    size_t first = fit->blow + (size_t)(steps_s[6] * rate) + 1;
+    double rate = fit->strike->rate_hz, noise = fit->noise.variance;
     size_t last = fit->blow + (size_t)(0.1 * rate);
     last = last < fit->end ? last : fit->end;
-    for (size_t n = first; n < last; n++)
+    double total = 0;
+    for (size_t n = fit->blow + 1; n < last; n++)
         total += (double)y[n] * (double)y[n] - noise;
-    for (size_t i = 0; i + 1 < sizeof steps_s / sizeof steps_s[0]; i++) {
-        size_t begin = fit->blow + (size_t)(steps_s[i] * rate) + 1;
-        rest = 0;
+    for (double step = 0.010 * rate; step >= 1; step /= 2) {
+        size_t begin = fit->blow + (size_t)step;
+        double rest = 0;
         for (size_t n = begin; n < last; n++)
             rest += (double)y[n] * (double)y[n] - noise;
         if (rest > 0.1 * total && begin + 32 < fit->end)
             return begin;
     }
-    return first + 32 < fit->end ? first : fit->blow;
+    return fit->blow + 1 < fit->end ? fit->blow + 1 : fit->blow;
 }
 
 /* Model at `offset` samples from the segment's first (negative: before it), tones and all. */
@@ -140,9 +137,9 @@ static double model_at(const struct segment *segment, double offset, bool with_r
     double sum = 0;
     for (unsigned k = 0; k < segment->pole_count; k++) {
         const struct pole *pole = &segment->poles[k];
-        bool is_old = pole->kind == POLE_TONE || pole->is_carried;
-        if (with_rings || is_old)
-            sum += creal(pole->c * cexp(pole->p * offset));
+        double complex c = with_rings || pole->kind == POLE_TONE ? pole->c : pole->tail;
+        if (c != 0)
+            sum += creal(c * cexp(pole->p * offset));
     }
     return sum;
 }
