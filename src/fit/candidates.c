@@ -43,10 +43,13 @@ static bool is_misfit(const struct fit *fit, const struct candidate *candidate)
         return true;
     for (unsigned k = 0; k < segment->pole_count; k++) {
         const struct pole *pole = &segment->poles[k];
-        if (pole->kind != POLE_RING)
+        if (pole->kind == POLE_REAL)
             continue;
-        double width = fmax(-creal(pole->p), a);
-        if (fabs(cimag(pole->p) - w) < NEAR_WIDTHS * 2 * width && size < NEAR_SHARE * cabs(pole->c))
+        /* A tone wanders by more than a ring does: mains by its load, a fan by its draught. */
+        bool is_tone = pole->kind == POLE_TONE;
+        double width = is_tone ? fmax(a, 2 / fit->strike->rate_hz) : fmax(-creal(pole->p), a);
+        double share = is_tone ? 0.05 : NEAR_SHARE;
+        if (fabs(cimag(pole->p) - w) < NEAR_WIDTHS * 2 * width && size < share * cabs(pole->c))
             return true;
     }
     return false;
@@ -158,6 +161,25 @@ static void add_known_poles(struct fit *fit)
         refine_amplitudes(fit->segment);
 }
 
+/* Beside a pole that is not settled yet (index `settled` and up) a candidate waits for the next
+ * round: the residual there is mostly what that pole still misses. Within a line width or so of a
+ * settled one it is the doublet test's matter. */
+static bool is_crowded(const struct segment *segment, const struct candidate *candidate,
+                       unsigned settled)
+{
+    double a = -creal(candidate->p), w = cimag(candidate->p);
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        const struct pole *pole = &segment->poles[k];
+        if (pole->kind != POLE_RING)
+            continue;
+        double width = fmax(-creal(pole->p), a);
+        double reach = k < settled ? 2 * width : 30 * width;
+        if (fabs(cimag(pole->p) - w) < reach)
+            return true;
+    }
+    return false;
+}
+
 static unsigned search_round(struct fit *fit)
 {
     struct segment *segment = fit->segment;
@@ -176,11 +198,12 @@ static unsigned search_round(struct fit *fit)
         candidates[0] = heavy; /* the others may be its skirts: they wait for the next round */
         found = 1;
     }
-    unsigned added = 0;
+    unsigned added = 0, before = segment->pole_count;
     for (unsigned i = 0; i < found; i++) {
         if (ring_count(segment) >= fit->settings.modes_max)
             break;
-        if (is_misfit(fit, &candidates[i]) || is_too_quick(fit, -creal(candidates[i].p)))
+        if (is_crowded(segment, &candidates[i], before) || is_misfit(fit, &candidates[i]) ||
+            is_too_quick(fit, -creal(candidates[i].p)))
             continue;
         if (segment_add_pole(segment, POLE_RING, candidates[i].p)) {
             segment->poles[segment->pole_count - 1].c = candidates[i].c;
@@ -269,5 +292,6 @@ bool candidates_fit(struct fit *fit)
         drop_weak_poles(fit);
     }
     refine_amplitudes(segment);
+    doublets_resolve(fit);
     return ring_count(segment) > 0;
 }

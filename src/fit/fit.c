@@ -193,7 +193,9 @@ bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
     reading_init(&reading);
     fit.w_low = 2 * WANE_PI * fit.settings.f_low_hz / strike->rate_hz;
     fit.w_high = 2 * WANE_PI * fit.settings.f_high_hz / strike->rate_hz;
+    fit.segment->negligible = 0;
     window_prepare(&fit);
+    fit.segment->negligible = 1e-5 * fit.noise.variance;
     fit.begin = window_first_begin(&fit);
     bool has_modes = candidates_fit(&fit);
     enum walk walk = WALK_MOVED;

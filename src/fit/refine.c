@@ -219,6 +219,7 @@ bool refine_poles(struct segment *segment, unsigned steps_max)
     double complex data_sums[POLES_MAX][2], move[POLES_MAX];
     struct pole before[POLES_MAX];
     double damping = 1e-4;
+    bool was_still = false;
     /* While poles are still on their way, coarse moments do; the last steps are made on fine ones.
      */
     double strain_max = STRAIN_COARSE;
@@ -247,8 +248,12 @@ bool refine_poles(struct segment *segment, unsigned steps_max)
             damping = fmax(damping * 10, 1e-5);
         } else {
             damping *= 0.1;
-            if (size < 1e-6)
-                break;
+            bool is_still = segment->explained - explained_before < segment->negligible;
+            if (size < 1e-6 || (is_still && strain_max == STRAIN_MAX && size < 1e-2)) {
+                if (size < 1e-6 || was_still)
+                    break;
+            }
+            was_still = is_still;
         }
         if (size < 1e-3 && strain_max > STRAIN_MAX) {
             strain_max = STRAIN_MAX;

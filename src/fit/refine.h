@@ -21,7 +21,8 @@ struct segment {
     size_t frame_count;
     struct pole poles[POLES_MAX];
     unsigned pole_count;
-    double explained; /* energy of the model's projection; filled by refine_* */
+    double negligible; /* gain of energy that means nothing beside the noise: where refining ends */
+    double explained;  /* energy of the model's projection; filled by refine_* */
 
     /* Scratch, lent by the workspace. */
     struct moments moments[POLES_MAX];

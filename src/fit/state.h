@@ -31,11 +31,15 @@ struct fit {
     size_t begin, end;    /* the fitted span; the segment's first sample is samples[begin] */
     double onset;
     bool is_clean_onset; /* the ring begins at the onset, no blow between */
+    double unresolved_w; /* 0: none */
+    int curved_pole;     /* -1: none */
     double unexplained;  /* share of the energy */
 };
 
 /* noise and window: window.c */
 void window_prepare(struct fit *fit);
+/* Was a line as strong as this mode there before the strike? Then it is no mode of it. */
+bool window_was_there_before(const struct fit *fit, const struct pole *pole);
 size_t window_first_begin(const struct fit *fit);
 /* Walks fit->begin back towards the onset as far as the ring found so far explains the samples.
  * WALK_CLEAN: silence was reached and fit->onset is the sample-exact change point. After WALK_MOVED
@@ -47,6 +51,10 @@ enum walk window_walk_back(struct fit *fit);
 bool candidates_fit(struct fit *fit);
 /* residual = samples - model over the fitted span. */
 void candidates_residual(struct fit *fit);
+
+/* Splits poles that want to be two. Sets unresolved_w where one does but the record cannot tell
+ * how, and curved_pole where it is a decay that is no exponential. Needs a settled segment. */
+void doublets_resolve(struct fit *fit);
 
 /* Best heavily damped mode, or slow real decay (the input's AC coupling), of the residual, which it
  * spoils: lowq.c. statistic as in spectrum.h. false when there is nothing at all. */

@@ -48,7 +48,7 @@ static void fill_from_pole(const struct fit *fit, const struct pole *pole, doubl
 static bool is_of_this_strike(const struct fit *fit, const struct pole *pole)
 {
     double w = cimag(pole->p);
-    if (w < fit->w_low || w > fit->w_high)
+    if (w < fit->w_low || w > fit->w_high || window_was_there_before(fit, pole))
         return false;
     return !pole->is_carried || cabs(pole->c - pole->tail) > 0.1 * cabs(pole->tail);
 }

@@ -27,6 +27,24 @@ static void subtract_carried(const struct fit *fit, float *y, size_t count)
     }
 }
 
+/* Two tones closer than the span can tell apart are one, and a tone must stand clear of the noise.
+ */
+static void merge_tones(struct fit *fit, size_t count)
+{
+    struct segment *segment = fit->segment;
+    double cell = 2 * WANE_PI / (double)count;
+    for (unsigned k = 0; k < segment->pole_count; k++)
+        for (unsigned l = segment->pole_count; l-- > k + 1;) {
+            if (fabs(cimag(segment->poles[k].p - segment->poles[l].p)) > 0.8 * cell)
+                continue;
+            if (cabs(segment->poles[l].c) > cabs(segment->poles[k].c)) {
+                segment->poles[k] = segment->poles[l];
+                segment->has_moments[k] = false;
+            }
+            segment_remove_pole(segment, l);
+        }
+}
+
 /* Steady tones of the quiet span: found, refined together, taken out of `quiet`. */
 static void find_tones(struct fit *fit, float *quiet, size_t count)
 {
@@ -48,6 +66,10 @@ static void find_tones(struct fit *fit, float *quiet, size_t count)
             segment_add_pole(segment, POLE_TONE, J * w[i]);
         if (!refine_poles(segment, 12))
             break;
+        unsigned before = segment->pole_count;
+        merge_tones(fit, count);
+        if (segment->pole_count < before)
+            refine_poles(segment, 12);
     }
     fit->tone_count = 0;
     for (unsigned k = 0; k < segment->pole_count; k++) {
@@ -72,6 +94,28 @@ static size_t find_blow(const struct fit *fit)
             return n < strike->trigger + reach / 4 ? n : strike->trigger;
     }
     return strike->trigger < strike->frame_count ? strike->trigger : strike->frame_count - 1;
+}
+
+bool window_was_there_before(const struct fit *fit, const struct pole *pole)
+{
+    size_t count = fit->quiet_end;
+    if (count < 64 || pole->is_carried)
+        return false;
+    double complex turn = cexp(-J * cimag(pole->p)), at = 1;
+    double complex hann = cexp(J * 2 * WANE_PI / (double)count), window = 1;
+    double complex sum = 0;
+    double norm = 0;
+    for (size_t n = 0; n < count; n++) {
+        double w = 0.5 - 0.5 * creal(window);
+        sum += (double)fit->workspace->y[n] * w * at;
+        norm += w;
+        at *= turn;
+        window *= hann;
+    }
+    double amplitude = 2 * cabs(sum) / norm;
+    double noise = 6 * noise_density(&fit->noise, cimag(pole->p)) / (double)count;
+    double at_onset = cabs(pole->c * cexp(-pole->p * ((double)fit->begin - fit->onset)));
+    return amplitude * amplitude > 12 * noise && amplitude > 0.4 * at_onset;
 }
 
 /* The mean of the quiet span is the card's offset, not part of the strike. */

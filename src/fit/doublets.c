@@ -1,0 +1,130 @@
+/* Doublets: two modes closer than a few line widths look like one to the search. Whether a pole
+ * wants to be two is seen in the residual, by a score test; then several starts are tried. */
+#include "fit/state.h"
+
+#include <math.h>
+#include <string.h>
+
+/* In noise the score is Exp(1): exp(-7) is one mode in a thousand that is looked at in vain. */
+#define SCORE_LEAST 7.0
+#define SPLITS_MAX  4
+
+/* To first order, what one pole misses of two is n^2 exp(p n). Among functions that the fit has
+ * left nothing of (exp(p n), n exp(p n)) that is the second Laguerre function of x = 2 a n, (1 - 2
+ * x + x^2/2) exp(-x/2): its share of the residual, as energy over density. */
+static double doublet_score(struct fit *fit, unsigned k)
+{
+    struct segment *segment = fit->segment;
+    const struct pole *pole = &segment->poles[k];
+    double a = -creal(pole->p);
+    size_t length = pole_length(pole, segment->frame_count);
+    struct moments moments = {.m = segment->moments[k].m};
+    size_t block = moments_block_for(length);
+    moments_gather(fit->workspace->residual, length, pole->p, block, segment->table, &moments);
+    segment->has_moments[k] = false; /* their memory was lent */
+    double complex sum = 0, step = cexp(pole->p * (double)block);
+    double complex turn = cexp(pole->p * ((double)block - 1) / 2);
+    for (size_t j = 0; j < moments.block_count; j++) {
+        double n = (double)(j * block) + ((double)block - 1) / 2, b = (double)block;
+        const double complex *m = moments.m[j];
+        double complex n1 = n * m[0] + b * m[1];
+        double complex n2 = n * n * m[0] + 2 * n * b * m[1] + b * b * m[2];
+        sum += turn * (m[0] - 4 * a * n1 + 2 * a * a * n2);
+        turn *= step;
+    }
+    double norm = (1 - exp(-2 * a * (double)segment->frame_count)) / (2 * a);
+    double density = noise_density(&fit->noise, cimag(pole->p));
+    return (creal(sum) * creal(sum) + cimag(sum) * cimag(sum)) / (density * norm);
+}
+
+static void restore(struct segment *segment, const struct pole *poles, unsigned count)
+{
+    memcpy(segment->poles, poles, count * sizeof *poles);
+    segment->pole_count = count;
+    memset(segment->has_moments, 0, sizeof segment->has_moments);
+}
+
+/* Tries to split pole k in several ways; keeps the best when it gains enough. */
+static bool try_split(struct fit *fit, unsigned k)
+{
+    /* By how much the two differ in frequency and decay, in units of the decay. */
+    static const double starts[][2] = {{0.5, 0}, {0.15, 0.4}, {0.15, -0.4},
+                                       {1.5, 0}, {0.3, 0.1},  {0.3, -0.1}};
+    struct segment *segment = fit->segment;
+    struct pole before[POLES_MAX], best[POLES_MAX];
+    unsigned count = segment->pole_count;
+    double explained = segment->explained, best_explained = explained;
+    if (count == POLES_MAX)
+        return false;
+    memcpy(before, segment->poles, sizeof before);
+    for (size_t i = 0; i < sizeof starts / sizeof starts[0]; i++) {
+        restore(segment, before, count);
+        double a = -creal(before[k].p);
+        double complex half = (starts[i][1] + J * starts[i][0]) * a / 2;
+        if (!segment_add_pole(segment, POLE_RING, before[k].p + half))
+            continue;
+        segment->poles[k].p = before[k].p - half;
+        if (refine_poles(segment, 25) && segment->explained > best_explained) {
+            best_explained = segment->explained;
+            memcpy(best, segment->poles, sizeof best);
+        }
+    }
+    double density = noise_density(&fit->noise, cimag(before[k].p));
+    double gain = (best_explained - explained) / (2 * density);
+    if (gain < log((double)segment->frame_count) + 8) {
+        restore(segment, before, count);
+        return false;
+    }
+    restore(segment, best, count + 1);
+    return true;
+}
+
+/* Is one of the pair only what is left of the other's misfit, or of a decay that is no exponential?
+ */
+static bool is_real_pair(const struct pole *a, const struct pole *b)
+{
+    double size_a = cabs(a->c), size_b = cabs(b->c);
+    double width = fmin(-creal(a->p), -creal(b->p));
+    double split = fabs(cimag(a->p - b->p));
+    double share = fmin(size_a, size_b) / fmax(size_a, size_b);
+    return share > 0.02 && split > 0.2 * width;
+}
+
+void doublets_resolve(struct fit *fit)
+{
+    struct segment *segment = fit->segment;
+    fit->unresolved_w = 0;
+    fit->curved_pole = -1;
+    for (int split = 0; split < SPLITS_MAX; split++) {
+        candidates_residual(fit);
+        double worst = SCORE_LEAST;
+        int wanted = -1;
+        for (unsigned k = 0; k < segment->pole_count; k++) {
+            if (segment->poles[k].kind != POLE_RING)
+                continue;
+            double score = doublet_score(fit, k);
+            if (score > worst) {
+                worst = score;
+                wanted = (int)k;
+            }
+        }
+        refine_amplitudes(segment);
+        if (wanted < 0)
+            return;
+        struct pole before[POLES_MAX];
+        unsigned count = segment->pole_count;
+        memcpy(before, segment->poles, sizeof before);
+        bool is_split = try_split(fit, (unsigned)wanted);
+        if (is_split && is_real_pair(&segment->poles[wanted], &segment->poles[count])) {
+            refine_amplitudes(segment);
+            continue;
+        }
+        if (is_split)
+            fit->curved_pole = wanted;
+        else
+            fit->unresolved_w = cimag(before[wanted].p);
+        restore(segment, before, count);
+        refine_amplitudes(segment);
+        return;
+    }
+}
