@@ -7,7 +7,9 @@
 
 /* In noise the score is Exp(1): exp(-7) is one mode in a thousand that is looked at in vain. */
 #define SCORE_LEAST 7.0
-#define SPLITS_MAX  4
+/* What a pair may still leave: noise, or a part that is not quite the model. */
+#define SCORE_SETTLED 30.0
+#define SPLITS_MAX    4
 
 /* To first order, what one pole misses of two is n^2 exp(p n). Among functions that the fit has
  * left nothing of (exp(p n), n exp(p n)) that is the second Laguerre function of x = 2 a n, (1 - 2
@@ -90,41 +92,56 @@ static bool is_real_pair(const struct pole *a, const struct pole *b)
     return share > 0.02 && split > 0.2 * width;
 }
 
+/* Which ring pole's residual asks most for a second one; -1 when none does. */
+static int find_wanting(struct fit *fit, double least)
+{
+    struct segment *segment = fit->segment;
+    int wanting = -1;
+    candidates_residual(fit);
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        if (segment->poles[k].kind != POLE_RING || fit->is_curved[k])
+            continue;
+        double score = doublet_score(fit, k);
+        if (score > least) {
+            least = score;
+            wanting = (int)k;
+        }
+    }
+    refine_amplitudes(segment);
+    return wanting;
+}
+
+/* After a split both halves must leave nothing: else the pole is bent, not double. */
+static bool is_settled_pair(struct fit *fit, unsigned a, unsigned b)
+{
+    struct segment *segment = fit->segment;
+    if (!is_real_pair(&segment->poles[a], &segment->poles[b]))
+        return false;
+    candidates_residual(fit);
+    double worst = fmax(doublet_score(fit, a), doublet_score(fit, b));
+    refine_amplitudes(segment);
+    return worst < SCORE_SETTLED;
+}
+
 void doublets_resolve(struct fit *fit)
 {
     struct segment *segment = fit->segment;
     fit->unresolved_w = 0;
-    fit->curved_pole = -1;
+    memset(fit->is_curved, 0, sizeof fit->is_curved);
     for (int split = 0; split < SPLITS_MAX; split++) {
-        candidates_residual(fit);
-        double worst = SCORE_LEAST;
-        int wanted = -1;
-        for (unsigned k = 0; k < segment->pole_count; k++) {
-            if (segment->poles[k].kind != POLE_RING)
-                continue;
-            double score = doublet_score(fit, k);
-            if (score > worst) {
-                worst = score;
-                wanted = (int)k;
-            }
-        }
-        refine_amplitudes(segment);
-        if (wanted < 0)
+        int wanting = find_wanting(fit, SCORE_LEAST);
+        if (wanting < 0)
             return;
         struct pole before[POLES_MAX];
         unsigned count = segment->pole_count;
         memcpy(before, segment->poles, sizeof before);
-        bool is_split = try_split(fit, (unsigned)wanted);
-        if (is_split && is_real_pair(&segment->poles[wanted], &segment->poles[count])) {
-            refine_amplitudes(segment);
+        bool is_split = try_split(fit, (unsigned)wanting);
+        if (is_split && is_settled_pair(fit, (unsigned)wanting, count))
             continue;
-        }
-        if (is_split)
-            fit->curved_pole = wanted;
-        else
-            fit->unresolved_w = cimag(before[wanted].p);
+        if (!is_split)
+            fit->unresolved_w = cimag(before[wanting].p);
         restore(segment, before, count);
         refine_amplitudes(segment);
-        return;
+        fit->is_curved[wanting] = true;
     }
 }

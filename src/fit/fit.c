@@ -179,6 +179,36 @@ static void list_tones(const struct fit *fit, struct reading *reading)
     }
 }
 
+/* What the verdict needs to know beyond the modes. */
+static void examine(struct fit *fit)
+{
+    struct segment *segment = fit->segment;
+    double strongest = -1;
+    bool is_any_curved = false;
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        const struct pole *pole = &segment->poles[k];
+        double a = -creal(pole->p);
+        double energy = creal(pole->c * conj(pole->c)) / fmax(a, 1e-9);
+        if (pole->kind != POLE_RING)
+            continue;
+        is_any_curved = is_any_curved || fit->is_curved[k];
+        if (energy > strongest) {
+            strongest = energy;
+            fit->lead_pole = k;
+        }
+    }
+    clip_count(fit);
+    breaks_find(fit);
+    if (fit->break_kind == BREAK_LOST && fit->break_at > fit->begin + 64 &&
+        -creal(segment->poles[fit->lead_pole].p) * (double)(fit->break_at - fit->begin) >= 3) {
+        fit->end = fit->break_at;
+        candidates_fit(fit);
+    }
+    if (fit->break_kind == BREAK_NONE && is_any_curved)
+        curvature_measure(fit);
+    verdict_measure(fit);
+}
+
 bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
                 const struct fit_settings *settings, struct reading *out_reading, struct error *err)
 {
@@ -204,6 +234,8 @@ bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
         if (walk != WALK_ENDED)
             has_modes = candidates_fit(&fit);
     }
+    if (has_modes)
+        examine(&fit);
     uncertainty_fill(&fit, &reading);
     sort_and_label(&reading);
     list_tones(&fit, &reading);

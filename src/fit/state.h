@@ -15,6 +15,15 @@ struct fit_workspace {
     struct segment segment;
 };
 
+enum break_kind { BREAK_NONE, BREAK_HIT, BREAK_LOST };
+
+/* A pole's early and late value; u of their difference. */
+struct curvature {
+    bool is_known;
+    double complex early, late;
+    double u_a, u_w;
+};
+
 /* Positions are indices into the strike's samples. */
 struct fit {
     struct fit_workspace *workspace;
@@ -30,10 +39,21 @@ struct fit {
     size_t blow;          /* first loud sample */
     size_t begin, end;    /* the fitted span; the segment's first sample is samples[begin] */
     double onset;
-    bool is_clean_onset; /* the ring begins at the onset, no blow between */
-    double unresolved_w; /* 0: none */
-    int curved_pole;     /* -1: none */
-    double unexplained;  /* share of the energy */
+    bool is_clean_onset;       /* the ring begins at the onset, no blow between */
+    double unresolved_w;       /* 0: none */
+    unsigned lead_pole;        /* the strongest at the onset */
+    bool is_curved[POLES_MAX]; /* the residual says that this pole is not all there is */
+    struct curvature curvature[POLES_MAX];
+    enum break_kind break_kind;
+    size_t break_at;
+    double lost_frames;
+    size_t clipped, clipped_early, clipped_in_blow; /* samples */
+    double clipped_share;                           /* of the window's first third */
+    bool is_noise_from_tail; /* nothing before the strike to measure it from */
+    size_t lost_at;          /* where the driver says that frames are missing; 0: nowhere */
+    double noise_after_near; /* as noise_after, at the lead mode's frequency */
+    double noise_after; /* variance in the window's last part over the noise before; 0: unknown */
+    double unexplained; /* share of the energy */
 };
 
 /* noise and window: window.c */
@@ -63,7 +83,18 @@ bool lowq_search(struct fit *fit, struct candidate *out, bool *out_is_real);
 /* uncertainty.c: fills modes (unsorted, unlabelled) with values and uncertainties at the onset. */
 void uncertainty_fill(struct fit *fit, struct reading *reading);
 
-/* verdict.c: reasons, remarks, why, verdict. */
+/* Second blows and silent losses: breaks.c. */
+void breaks_find(struct fit *fit);
+
+/* Early and late part apart, for all poles: curvature.c. Leaves the segment as it was. */
+void curvature_measure(struct fit *fit);
+
+/* clip.c */
+void clip_count(struct fit *fit);
+bool clip_is_bent(struct fit *fit, double loss);
+
+/* verdict.c: what is left unexplained, the noise after; then reasons, remarks, why, verdict. */
+void verdict_measure(struct fit *fit);
 void verdict_judge(struct fit *fit, struct reading *reading);
 
 #endif

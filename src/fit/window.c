@@ -137,6 +137,12 @@ void window_prepare(struct fit *fit)
     size_t guard = (size_t)(0.005 * strike->rate_hz);
     fit->quiet_end = strike->trigger > guard ? strike->trigger - guard : 0;
     fit->end = strike->frame_count;
+    for (unsigned i = strike->lost_count; i-- > 0;) {
+        if (strike->lost[i].at <= strike->trigger || strike->lost[i].at >= fit->end)
+            continue;
+        fit->end = fit->lost_at = strike->lost[i].at;
+        fit->lost_frames = (double)strike->lost[i].frames;
+    }
     take_offset_out(fit);
     float *quiet = workspace->quiet;
     memcpy(quiet, workspace->y, fit->quiet_end * sizeof *quiet);
@@ -144,6 +150,7 @@ void window_prepare(struct fit *fit)
     find_tones(fit, quiet, fit->quiet_end);
     spectrum_measure_noise(workspace->spectrum, quiet, fit->quiet_end, GRAIN_24_BIT, &fit->noise);
     if (!fit->noise.is_measured || fit->noise.variance < 2 * GRAIN_24_BIT) {
+        fit->is_noise_from_tail = true;
         size_t tail = (strike->frame_count - strike->trigger) / 4;
         size_t from = strike->frame_count - tail;
         spectrum_measure_noise(workspace->spectrum, workspace->y + from, tail, GRAIN_24_BIT,
