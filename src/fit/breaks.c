@@ -4,6 +4,9 @@
 #include "fit/state.h"
 
 #include <math.h>
+#ifdef FIT_DEBUG
+#include <stdio.h>
+#endif
 #include <string.h>
 
 #define BLOCK_S      0.0025
@@ -16,6 +19,7 @@
 struct lines {
     unsigned count;
     double complex p[LINES_MAX];
+    double complex c[LINES_MAX]; /* at the segment's first sample */
 };
 
 /* The strongest poles that live longer than a blow. */
@@ -43,6 +47,7 @@ static void choose_lines(const struct fit *fit, struct lines *lines)
             return;
         strongest = fmax(strongest, best);
         is_taken[at] = true;
+        lines->c[lines->count] = segment->poles[at].c;
         lines->p[lines->count++] = segment->poles[at].p;
     }
 }
@@ -51,8 +56,8 @@ static void choose_lines(const struct fit *fit, struct lines *lines)
 static double explain(const float *y, size_t from, size_t to, const struct lines *lines,
                       double complex *out_c)
 {
-    double matrix[4 * LINES_MAX * LINES_MAX], scale[2 * LINES_MAX], x[2 * LINES_MAX];
-    double b[2 * LINES_MAX], ridge[2 * LINES_MAX];
+    double matrix[4 * LINES_MAX * LINES_MAX] = {0}, scale[2 * LINES_MAX], x[2 * LINES_MAX] = {0};
+    double b[2 * LINES_MAX], ridge[2 * LINES_MAX] = {0};
     unsigned n = 2 * lines->count;
     for (unsigned k = 0; k < lines->count; k++) {
         double complex sum = 0, z = 1, step = cexp(lines->p[k]);
@@ -89,6 +94,11 @@ static double explain(const float *y, size_t from, size_t to, const struct lines
     return energy;
 }
 
+static double complex at_break(double complex c, double complex p, size_t frames)
+{
+    return c * cexp(p * (double)frames);
+}
+
 static double energy_of(const float *y, size_t from, size_t to)
 {
     double sum = 0;
@@ -115,11 +125,6 @@ static bool find_suspect(struct fit *fit, size_t block, size_t *out_first, size_
         is_suspect = true;
     }
     return is_suspect;
-}
-
-static double complex at_break(double complex c, double complex p, size_t frames)
-{
-    return c * cexp(p * (double)frames);
 }
 
 static void classify(struct fit *fit, const struct lines *lines, size_t from, size_t at,
@@ -157,16 +162,24 @@ static void look_before_begin(struct fit *fit, const struct lines *lines)
         return;
     to -= margin;
     double cycles = cimag(lines->p[0]) * (double)(to - from) / (2 * WANE_PI);
-    struct lines two = *lines;
-    two.count = two.count > 2 ? 2 : two.count;
+    struct lines few = *lines;
+    unsigned bearable = cycles < 2.5 ? 1 : cycles < 5 ? 2 : 3;
+    few.count = few.count > bearable ? bearable : few.count;
     double complex c[LINES_MAX];
     double whole = energy_of(fit->workspace->y, from, to);
     double noise = fit->noise.variance * (double)(to - from);
-    if (cycles < 2.5 || whole < 20 * noise ||
-        explain(fit->workspace->y, from, to, &two, c) < 0.85 * whole)
+    if (cycles < 1 || whole < 20 * noise ||
+        explain(fit->workspace->y, from, to, &few, c) < 0.85 * whole)
+        return;
+    /* The same blow's ring, only not quite the model, goes on where it was. */
+    double complex expected = lines->c[0] * cexp(lines->p[0] * ((double)from - (double)fit->begin));
+    if (cabs(c[0] - expected) < 0.2 * cabs(expected))
         return;
     fit->break_kind = BREAK_HIT;
     fit->break_at = fit->begin;
+#ifdef FIT_DEBUG
+    fprintf(stderr, "BREAK before begin: %zu samples\n", fit->begin - fit->blow);
+#endif
 }
 
 void breaks_find(struct fit *fit)
@@ -205,6 +218,10 @@ void breaks_find(struct fit *fit)
     }
     if (at == 0 || best - one < GAIN_LEAST * whole || whole - best > 0.5 * (whole - one))
         return;
+#ifdef FIT_DEBUG
+    fprintf(stderr, "BREAK at %zu after blow, one %.4g both %.4g whole %.4g first %zu last %zu\n",
+            at - fit->blow, one / whole, best / whole, whole, first, last);
+#endif
     explain(y, from, at, &lines, before);
     explain(y, at, to, &lines, after);
     classify(fit, &lines, from, at, before, after);

@@ -11,6 +11,7 @@
  * what is left of the stronger one's own misfit: no real part is exactly the model. */
 #define NEAR_WIDTHS  12
 #define NEAR_SHARE   0.01
+#define CLOSE_WIDTHS 4
 #define ENERGY_SHARE 1e-7  /* of the whole: weaker modes do not matter to anyone */
 #define A_MAX        1.5   /* per sample */
 #define BLOW_S       0.005 /* the longest contact of a usual tap */
@@ -173,7 +174,7 @@ static bool is_crowded(const struct segment *segment, const struct candidate *ca
         if (pole->kind != POLE_RING)
             continue;
         double width = fmax(-creal(pole->p), a);
-        double reach = k < settled ? 2 * width : 30 * width;
+        double reach = k < settled ? CLOSE_WIDTHS * 2 * width : 30 * width;
         if (fabs(cimag(pole->p) - w) < reach)
             return true;
     }

@@ -7,7 +7,7 @@
 #define FLAT_RUN 3
 
 /* Samples of [from, to) that stand at an end stop or in a flat top near the extreme. */
-static size_t count_clipped(const float *x, size_t from, size_t to, float peak)
+static size_t count_clipped(const float *x, size_t from, size_t to, float peak, size_t flat_run)
 {
     size_t count = 0, run = 1;
     for (size_t n = from; n < to; n++) {
@@ -18,12 +18,24 @@ static size_t count_clipped(const float *x, size_t from, size_t to, float peak)
             continue;
         if (fabsf(x[n]) >= END_STOP)
             count++;
-        else if (run == FLAT_RUN)
-            count += FLAT_RUN;
-        else if (run > FLAT_RUN)
+        else if (run == flat_run)
+            count += flat_run;
+        else if (run > flat_run)
             count++;
     }
     return count;
+}
+
+/* The samples' grain: the smallest step between neighbours. */
+static double grain_of(const float *x, size_t from, size_t to)
+{
+    float least = 1;
+    for (size_t n = from + 1; n < to; n++) {
+        float step = fabsf(x[n] - x[n - 1]);
+        if (step > 0 && step < least)
+            least = step;
+    }
+    return (double)least;
 }
 
 void clip_count(struct fit *fit)
@@ -34,11 +46,17 @@ void clip_count(struct fit *fit)
         peak = fmaxf(peak, fabsf(x[n]));
     if (peak < 1e-4f)
         return;
+    /* The top of a slow sine is flat to within the grain for 2 sqrt(2 grain / (A w^2)) samples. */
+    double w = cimag(fit->segment->poles[fit->lead_pole].p);
+    double grain = grain_of(x, fit->blow, fit->end);
+    double top = 2 * sqrt(2 * grain / ((double)peak * w * w));
+    size_t flat_run = FLAT_RUN + (size_t)fmin(2 * top, 1e6);
     size_t third = fit->begin + (fit->end - fit->begin) / 3;
     size_t blow = fit->blow > 8 ? fit->blow - 8 : 0;
-    fit->clipped_in_blow = blow < fit->begin ? count_clipped(x, blow, fit->begin, peak) : 0;
-    fit->clipped_early = count_clipped(x, fit->begin, third, peak);
-    fit->clipped = fit->clipped_early + count_clipped(x, third, fit->end, peak);
+    fit->clipped_in_blow =
+        blow < fit->begin ? count_clipped(x, blow, fit->begin, peak, flat_run) : 0;
+    fit->clipped_early = count_clipped(x, fit->begin, third, peak, flat_run);
+    fit->clipped = fit->clipped_early + count_clipped(x, third, fit->end, peak, flat_run);
     fit->clipped_share = (double)fit->clipped_early / (double)(third - fit->begin + 1);
 }
 

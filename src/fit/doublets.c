@@ -7,9 +7,9 @@
 
 /* In noise the score is Exp(1): exp(-7) is one mode in a thousand that is looked at in vain. */
 #define SCORE_LEAST 7.0
-/* What a pair may still leave: noise, or a part that is not quite the model. */
-#define SCORE_SETTLED 30.0
-#define SPLITS_MAX    4
+/* What a pair may still leave, beside its stronger half: a part is never quite the model. */
+#define LEFT_SHARE 0.01
+#define SPLITS_MAX 4
 
 /* To first order, what one pole misses of two is n^2 exp(p n). Among functions that the fit has
  * left nothing of (exp(p n), n exp(p n)) that is the second Laguerre function of x = 2 a n, (1 - 2
@@ -111,6 +111,25 @@ static int find_wanting(struct fit *fit, double least)
     return wanting;
 }
 
+/* Is there still a line near the pair? */
+static bool has_line_beside(struct fit *fit, unsigned a, unsigned b)
+{
+    const struct segment *segment = fit->segment;
+    struct candidate candidates[CANDIDATES_MAX];
+    double reach = 0, size = fmax(cabs(segment->poles[a].c), cabs(segment->poles[b].c));
+    double w_a = cimag(segment->poles[a].p), w_b = cimag(segment->poles[b].p);
+    reach = fmax(-creal(segment->poles[a].p), -creal(segment->poles[b].p)) * 10;
+    unsigned found =
+        spectrum_search(fit->workspace->spectrum, fit->workspace->residual, segment->frame_count,
+                        &fit->noise, fmax(fit->w_low, fmin(w_a, w_b) - reach),
+                        fmin(fit->w_high, fmax(w_a, w_b) + reach), 25, candidates);
+    for (unsigned i = 0; i < found; i++) {
+        if (cabs(candidates[i].c) > LEFT_SHARE * size)
+            return true;
+    }
+    return false;
+}
+
 /* After a split both halves must leave nothing: else the pole is bent, not double. */
 static bool is_settled_pair(struct fit *fit, unsigned a, unsigned b)
 {
@@ -118,9 +137,9 @@ static bool is_settled_pair(struct fit *fit, unsigned a, unsigned b)
     if (!is_real_pair(&segment->poles[a], &segment->poles[b]))
         return false;
     candidates_residual(fit);
-    double worst = fmax(doublet_score(fit, a), doublet_score(fit, b));
+    bool is_left = has_line_beside(fit, a, b);
     refine_amplitudes(segment);
-    return worst < SCORE_SETTLED;
+    return !is_left;
 }
 
 void doublets_resolve(struct fit *fit)

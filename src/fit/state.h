@@ -51,7 +51,7 @@ struct fit {
     double clipped_share;                           /* of the window's first third */
     bool is_noise_from_tail; /* nothing before the strike to measure it from */
     size_t lost_at;          /* where the driver says that frames are missing; 0: nowhere */
-    double noise_after_near; /* as noise_after, at the lead mode's frequency */
+    double quietest;    /* power of the ring's quietest 10 ms over the noise before; 0: unknown */
     double noise_after; /* variance in the window's last part over the noise before; 0: unknown */
     double unexplained; /* share of the energy */
 };

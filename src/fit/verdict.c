@@ -2,6 +2,7 @@
 #include "fit/state.h"
 
 #include <math.h>
+#include <stdlib.h>
 #include <string.h>
 
 static void add(struct reading *reading, enum reason reason, enum verdict verdict)
@@ -9,6 +10,39 @@ static void add(struct reading *reading, enum reason reason, enum verdict verdic
     reading->reasons |= 1u << reason;
     if (verdict > reading->verdict)
         reading->verdict = verdict;
+}
+
+static int compare_doubles(const void *a, const void *b)
+{
+    double x = *(const double *)a, y = *(const double *)b;
+    return (x > y) - (x < y);
+}
+
+/* Median over the frequencies: what is left of a mode here and there does not count as noise. */
+static double median_ratio(const struct noise *after, const struct noise *before)
+{
+    double ratios[NOISE_BINS_MAX + 1];
+    size_t n = 0;
+    for (size_t i = 1; i < after->bins; i++)
+        ratios[n++] =
+            after->density[i] / noise_density(before, WANE_PI * (double)i / (double)after->bins);
+    qsort(ratios, n, sizeof *ratios, compare_doubles);
+    return n > 0 ? ratios[n / 2] : 0;
+}
+
+/* Power of the quietest 10 ms of the ring over the noise before it: an input that is left alone is
+ * never quieter than its own noise. */
+static double quietest_block(const struct fit *fit)
+{
+    size_t block = (size_t)(0.01 * fit->strike->rate_hz) + 64;
+    double least = INFINITY;
+    for (size_t at = 0; at + block <= fit->segment->frame_count; at += block) {
+        double sum = 0;
+        for (size_t n = at; n < at + block; n++)
+            sum += (double)fit->segment->y[n] * (double)fit->segment->y[n];
+        least = fmin(least, sum / (double)block);
+    }
+    return isfinite(least) ? least / fit->noise.variance : 0;
 }
 
 void verdict_measure(struct fit *fit)
@@ -33,9 +67,8 @@ void verdict_measure(struct fit *fit)
     struct noise after;
     spectrum_measure_noise(fit->workspace->spectrum, r + segment->frame_count - tail, tail, 1e-16,
                            &after);
-    fit->noise_after = after.variance / fit->noise.variance;
-    double w = cimag(segment->poles[fit->lead_pole].p);
-    fit->noise_after_near = noise_density(&after, w) / noise_density(&fit->noise, w);
+    fit->noise_after = median_ratio(&after, &fit->noise);
+    fit->quietest = quietest_block(fit);
 }
 
 static void judge_input(const struct fit *fit, struct reading *reading)
@@ -82,7 +115,7 @@ static void judge_lead(const struct fit *fit, struct reading *reading)
         reading->why.span_s = span_s;
         add(reading, REASON_TOO_SHORT, VERDICT_DOUBTFUL);
     }
-    bool has_risen = fit->noise_after > 2 && fit->noise_after_near > 1.6;
+    bool has_risen = fit->noise_after > 2;
     if (relative_u > 0.1 || has_risen) {
         reading->why.noise_dbfs = 10 * log10(2 * fit->noise.variance * fmax(fit->noise_after, 1));
         add(reading, REASON_NOISY, relative_u > 0.3 ? VERDICT_REJECTED : VERDICT_DOUBTFUL);
@@ -146,11 +179,12 @@ static void judge_steering(struct fit *fit, struct reading *reading)
     }
     bool moves_together = count >= 2 && least * most > 0 &&
                           fmax(fabs(least), fabs(most)) < 1.5 * fmin(fabs(least), fabs(most));
-    bool noise_fell = fit->noise_after > 0 && fit->noise_after < 0.2;
+    bool noise_fell = fit->quietest > 0 && fit->quietest < 0.25;
     bool is_bent = reading->reasons & (1u << REASON_NOT_EXPONENTIAL);
     bool noise_moved = fit->noise_after > 2.5 || (fit->noise_after > 0 && fit->noise_after < 0.4);
     if (noise_fell || (is_bent && (moves_together || noise_moved))) {
-        reading->why.gain_db = 10 * log10(fmax(fit->noise_after, 1e-9));
+        reading->why.gain_db =
+            10 * log10(fmax(noise_fell ? fit->quietest : fit->noise_after, 1e-9));
         add(reading, REASON_INPUT_STEERED, VERDICT_DOUBTFUL);
     }
 }
