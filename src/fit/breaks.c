@@ -13,7 +13,7 @@
 #define LINES_MAX    5
 #define CONTACT_S    0.004 /* a break nearer to the onset is the blow's own end */
 #define SUSPECT      0.05  /* of a block's energy unexplained: something happened there */
-#define GAIN_LEAST   0.05  /* share of the energy that two halves must explain beyond one whole */
+#define JUMP_LEAST   0.25  /* of the lead's amplitude: less is the part's own unsteadiness */
 #define STEADY_RATIO 0.2   /* amplitudes of both sides alike within this: nothing hit the part */
 
 struct lines {
@@ -131,13 +131,23 @@ static void classify(struct fit *fit, const struct lines *lines, size_t from, si
                      const double complex *before, const double complex *after)
 {
     double rate = fit->strike->rate_hz;
-    bool is_steady = true;
-    for (unsigned k = 0; k < lines->count && k < 2; k++) {
-        double ratio = cabs(after[k]) / cabs(at_break(before[k], lines->p[k], at - from));
-        is_steady = is_steady && fabs(ratio - 1) < STEADY_RATIO;
+    /* A gain that moves takes all lines alike and leaves their phases; a hit adds what it adds. */
+    bool is_steady = true, is_gain = true;
+    double gain_db = 0;
+    for (unsigned k = 0; k < lines->count && k < 3; k++) {
+        double complex reached = at_break(before[k], lines->p[k], at - from);
+        double ratio = cabs(after[k]) / cabs(reached);
+        if (k < 2)
+            is_steady = is_steady && fabs(ratio - 1) < STEADY_RATIO;
+        if (k == 0)
+            gain_db = 20 * log10(ratio);
+        is_gain = is_gain && ratio < 0.8 && fabs(carg(after[k] / reached)) < 0.2;
     }
     double wait_s = ((double)at - (double)fit->blow) / rate;
-    if (wait_s > 0.16 || (is_steady && wait_s > 0.02)) {
+    if ((is_gain && (lines->count > 1 || wait_s > 0.16)) || (wait_s > 0.16 && gain_db < -6)) {
+        fit->break_kind = BREAK_GAIN;
+        fit->gain_db = gain_db;
+    } else if (wait_s > 0.16 || (is_steady && wait_s > 0.02)) {
         fit->break_kind = BREAK_LOST;
         /* How many: the time by which the first line's phase jumped, whole periods unknown. */
         double complex turn = after[0] / at_break(before[0], lines->p[0], at - from);
@@ -172,8 +182,11 @@ static void look_before_begin(struct fit *fit, const struct lines *lines)
         explain(fit->workspace->y, from, to, &few, c) < 0.85 * whole)
         return;
     /* The same blow's ring, only not quite the model, goes on where it was. */
-    double complex expected = lines->c[0] * cexp(lines->p[0] * ((double)from - (double)fit->begin));
-    if (cabs(c[0] - expected) < 0.2 * cabs(expected))
+    double complex next[LINES_MAX];
+    size_t beyond = fit->begin + (to - from) < fit->end ? fit->begin + (to - from) : fit->end;
+    explain(fit->workspace->y, fit->begin, beyond, &few, next);
+    double complex expected = next[0] * cexp(lines->p[0] * ((double)from - (double)fit->begin));
+    if (cabs(c[0] - expected) < JUMP_LEAST * cabs(expected))
         return;
     fit->break_kind = BREAK_HIT;
     fit->break_at = fit->begin;
@@ -182,47 +195,76 @@ static void look_before_begin(struct fit *fit, const struct lines *lines)
 #endif
 }
 
-void breaks_find(struct fit *fit)
+/* The lines' poles and amplitudes on [from, to) alone; amplitudes at `from`. */
+static void fit_side(struct fit *fit, size_t from, size_t to, const struct lines *lines,
+                     struct lines *out)
 {
-    struct lines lines;
-    fit->break_kind = BREAK_NONE;
-    choose_lines(fit, &lines);
-    if (lines.count == 0)
+    struct segment *segment = fit->segment;
+    segment_begin(segment, fit->workspace->y + from, to - from);
+    for (unsigned k = 0; k < lines->count; k++)
+        segment_add_pole(segment, POLE_RING, lines->p[k]);
+    *out = *lines;
+    if (!refine_poles(segment, 8))
         return;
-    double rate = fit->strike->rate_hz, a = -creal(lines.p[0]);
-    look_before_begin(fit, &lines);
-    size_t block = (size_t)(BLOCK_S * rate), first = 0, last = 0;
-    if (fit->break_kind != BREAK_NONE || !find_suspect(fit, block, &first, &last))
-        return;
-    const float *y = fit->workspace->y;
-    size_t from = fit->blow + (size_t)(0.0015 * rate);
-    size_t to = from + (size_t)(8 / a);
-    to = to < fit->end ? to : fit->end;
-    double whole = energy_of(y, from, to);
-    double complex c[LINES_MAX], before[LINES_MAX], after[LINES_MAX];
-    double one = explain(y, from, to, &lines, c), best = one;
-    size_t at = 0;
-    size_t reach = (size_t)(0.1 * rate);
-    size_t start = from + (size_t)(0.0025 * rate);
-    size_t stop = last + 2 * block < to ? last + 2 * block : to;
-    if (first > reach + start)
-        start = first - reach;
-    size_t stride = (stop - start) / 200 + 1;
-    stride = stride < block ? block : stride;
-    for (size_t n = start; n < stop && n + block < to; n += stride) {
-        double both = explain(y, from, n, &lines, before) + explain(y, n, to, &lines, after);
+    for (unsigned k = 0; k < lines->count; k++) {
+        out->p[k] = segment->poles[k].p;
+        out->c[k] = segment->poles[k].c;
+    }
+}
+
+/* Where two halves with amplitudes of their own explain most more than one whole does. */
+static size_t scan(const float *y, size_t from, size_t to, size_t block, const struct lines *lines)
+{
+    double complex before[LINES_MAX], after[LINES_MAX];
+    double best = explain(y, from, to, lines, before);
+    size_t at = 0, stride = (to - from) / 160 + 1;
+    stride = stride < block / 2 ? block / 2 : stride;
+    for (size_t n = from + block; n + block < to; n += stride) {
+        double both = explain(y, from, n, lines, before) + explain(y, n, to, lines, after);
         if (both > best) {
             best = both;
             at = n;
         }
     }
-    if (at == 0 || best - one < GAIN_LEAST * whole || whole - best > 0.5 * (whole - one))
+    return at;
+}
+
+void breaks_find(struct fit *fit)
+{
+    struct lines lines, before, after;
+    fit->break_kind = BREAK_NONE;
+    choose_lines(fit, &lines);
+    if (lines.count == 0)
         return;
-#ifdef FIT_DEBUG
-    fprintf(stderr, "BREAK at %zu after blow, one %.4g both %.4g whole %.4g first %zu last %zu\n",
-            at - fit->blow, one / whole, best / whole, whole, first, last);
-#endif
-    explain(y, from, at, &lines, before);
-    explain(y, at, to, &lines, after);
-    classify(fit, &lines, from, at, before, after);
+    double rate = fit->strike->rate_hz;
+    look_before_begin(fit, &lines);
+    size_t block = (size_t)(BLOCK_S * rate), first = 0, last = 0;
+    if (fit->break_kind != BREAK_NONE || !find_suspect(fit, block, &first, &last))
+        return;
+    const float *y = fit->workspace->y;
+    size_t start = fit->blow + (size_t)(0.0015 * rate), reach = (size_t)(0.15 * rate);
+    size_t from = first > start + reach ? first - reach : start;
+    size_t to = last + reach < fit->end ? last + reach : fit->end;
+    size_t at = scan(y, from, to, block, &lines);
+    struct segment *segment = fit->segment;
+    struct pole poles[POLES_MAX];
+    unsigned pole_count = segment->pole_count;
+    double explained = segment->explained;
+    memcpy(poles, segment->poles, sizeof poles);
+    if (at > 0) {
+        size_t left = at > from + reach ? at - reach : from;
+        size_t right = at + reach < to ? at + reach : to;
+        fit_side(fit, left, at, &lines, &before);
+        fit_side(fit, at, right, &lines, &after);
+        double complex reached = at_break(before.c[0], before.p[0], at - left);
+        double jump = cabs(after.c[0] - reached) / fmax(cabs(after.c[0]), cabs(reached));
+        if (jump > JUMP_LEAST)
+            classify(fit, &before, left, at, before.c, after.c);
+    }
+    segment_begin(segment, y + fit->begin, fit->end - fit->begin);
+    segment->pole_count = pole_count;
+    segment->explained = explained;
+    memcpy(segment->poles, poles, sizeof poles);
+    memset(segment->has_moments, 0, sizeof segment->has_moments);
+    refine_amplitudes(segment);
 }

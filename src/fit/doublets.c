@@ -82,24 +82,24 @@ static bool try_split(struct fit *fit, unsigned k)
 }
 
 /* Is one of the pair only what is left of the other's misfit, or of a decay that is no exponential?
- */
+ * Two rates at one frequency are the mark of the latter. */
 static bool is_real_pair(const struct pole *a, const struct pole *b)
 {
     double size_a = cabs(a->c), size_b = cabs(b->c);
-    double width = fmin(-creal(a->p), -creal(b->p));
+    double least = fmin(-creal(a->p), -creal(b->p)), most = fmax(-creal(a->p), -creal(b->p));
     double split = fabs(cimag(a->p - b->p));
     double share = fmin(size_a, size_b) / fmax(size_a, size_b);
-    return share > 0.02 && split > 0.2 * width;
+    return share > 0.02 && split > 0.2 * least && (split > 0.3 * most || most < 2 * least);
 }
 
 /* Which ring pole's residual asks most for a second one; -1 when none does. */
-static int find_wanting(struct fit *fit, double least)
+static int find_wanting(struct fit *fit, const bool *is_done, double least)
 {
     struct segment *segment = fit->segment;
     int wanting = -1;
     candidates_residual(fit);
     for (unsigned k = 0; k < segment->pole_count; k++) {
-        if (segment->poles[k].kind != POLE_RING || fit->is_curved[k])
+        if (segment->poles[k].kind != POLE_RING || is_done[k])
             continue;
         double score = doublet_score(fit, k);
         if (score > least) {
@@ -142,21 +142,47 @@ static bool is_settled_pair(struct fit *fit, unsigned a, unsigned b)
     return !is_left;
 }
 
+/* Does one half of the pair want to be two again, by more than a real part's misfit? Then the three
+ * are no modes but one that bends. */
+static bool is_crowd(struct fit *fit, unsigned a, unsigned b)
+{
+    struct segment *segment = fit->segment;
+    struct pole before[POLES_MAX];
+    unsigned count = segment->pole_count;
+    memcpy(before, segment->poles, sizeof before);
+    candidates_residual(fit);
+    double score_a = doublet_score(fit, a), score_b = doublet_score(fit, b);
+    bool is_third = fmax(score_a, score_b) > 25 && try_split(fit, score_a > score_b ? a : b);
+    if (is_third) {
+        double size = fmax(cabs(before[a].c), cabs(before[b].c));
+        double third = fmin(fmin(cabs(segment->poles[a].c), cabs(segment->poles[b].c)),
+                            cabs(segment->poles[count].c));
+        is_third = third > 0.02 * size;
+    }
+    restore(segment, before, count);
+    refine_amplitudes(segment);
+    return is_third;
+}
+
 void doublets_resolve(struct fit *fit)
 {
     struct segment *segment = fit->segment;
+    bool is_done[POLES_MAX] = {false};
     fit->unresolved_w = 0;
     memset(fit->is_curved, 0, sizeof fit->is_curved);
     for (int split = 0; split < SPLITS_MAX; split++) {
-        int wanting = find_wanting(fit, SCORE_LEAST);
+        int wanting = find_wanting(fit, is_done, SCORE_LEAST);
         if (wanting < 0)
             return;
         struct pole before[POLES_MAX];
-        unsigned count = segment->pole_count;
+        unsigned count = segment->pole_count, one = (unsigned)wanting;
         memcpy(before, segment->poles, sizeof before);
-        bool is_split = try_split(fit, (unsigned)wanting);
-        if (is_split && is_settled_pair(fit, (unsigned)wanting, count))
+        bool is_split = try_split(fit, one);
+        is_done[one] = true;
+        if (is_split && is_settled_pair(fit, one, count) && !is_crowd(fit, one, count)) {
+            is_done[count] = true;
             continue;
+        }
         if (!is_split)
             fit->unresolved_w = cimag(before[wanting].p);
         restore(segment, before, count);

@@ -15,7 +15,7 @@ struct fit_workspace {
     struct segment segment;
 };
 
-enum break_kind { BREAK_NONE, BREAK_HIT, BREAK_LOST };
+enum break_kind { BREAK_NONE, BREAK_HIT, BREAK_LOST, BREAK_GAIN };
 
 /* A pole's early and late value; u of their difference. */
 struct curvature {
@@ -47,6 +47,7 @@ struct fit {
     enum break_kind break_kind;
     size_t break_at;
     double lost_frames;
+    double gain_db;                                 /* by how much the input moved its gain */
     size_t clipped, clipped_early, clipped_in_blow; /* samples */
     double clipped_share;                           /* of the window's first third */
     bool is_noise_from_tail; /* nothing before the strike to measure it from */

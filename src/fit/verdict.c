@@ -90,6 +90,10 @@ static void judge_input(const struct fit *fit, struct reading *reading)
         bool suffices = reading->mode_count > 0 && at >= fit->end && spans >= 3;
         add(reading, REASON_SAMPLES_LOST, suffices ? VERDICT_DOUBTFUL : VERDICT_REJECTED);
     }
+    if (fit->break_kind == BREAK_GAIN) {
+        reading->why.gain_db = fit->gain_db;
+        add(reading, REASON_INPUT_STEERED, VERDICT_DOUBTFUL);
+    }
     if (fit->break_kind == BREAK_HIT) {
         reading->why.after_s = ((double)fit->break_at - fit->onset) / rate;
         add(reading, REASON_DOUBLE_HIT, VERDICT_REJECTED);
