@@ -11,10 +11,10 @@
 
 #define BLOCK_S      0.0025
 #define LINES_MAX    5
-#define CONTACT_S    0.004 /* a break nearer to the onset is the blow's own end */
-#define SUSPECT      0.05  /* of a block's energy unexplained: something happened there */
-#define JUMP_LEAST   0.25  /* of the lead's amplitude: less is the part's own unsteadiness */
-#define STEADY_RATIO 0.2   /* amplitudes of both sides alike within this: nothing hit the part */
+#define CONTACT_S    0.0055 /* a break nearer to the onset is the blow's own end */
+#define SUSPECT      0.05   /* of a block's energy unexplained: something happened there */
+#define JUMP_LEAST   0.25   /* of the lead's amplitude: less is the part's own unsteadiness */
+#define STEADY_RATIO 0.2    /* amplitudes of both sides alike within this: nothing hit the part */
 
 struct lines {
     unsigned count;
@@ -160,6 +160,21 @@ static void classify(struct fit *fit, const struct lines *lines, size_t from, si
     fit->break_at = at;
 }
 
+/* Energy of y [from, to) that is left when the lines, whose amplitudes hold at `origin`, are taken
+ * out. Close lines have amplitudes that mean little each; their sum means much. */
+static double left_by(const float *y, size_t from, size_t to, size_t origin,
+                      const struct lines *lines)
+{
+    double left = 0;
+    for (size_t n = from; n < to; n++) {
+        double offset = (double)n - (double)origin, r = (double)y[n];
+        for (unsigned k = 0; k < lines->count; k++)
+            r -= creal(lines->c[k] * cexp(lines->p[k] * offset));
+        left += r * r;
+    }
+    return left;
+}
+
 /* The blow that takes longer than a blow: the same ring, with another amplitude, was there before.
  */
 static void look_before_begin(struct fit *fit, const struct lines *lines)
@@ -182,11 +197,10 @@ static void look_before_begin(struct fit *fit, const struct lines *lines)
         explain(fit->workspace->y, from, to, &few, c) < 0.85 * whole)
         return;
     /* The same blow's ring, only not quite the model, goes on where it was. */
-    double complex next[LINES_MAX];
+    struct lines next = few;
     size_t beyond = fit->begin + (to - from) < fit->end ? fit->begin + (to - from) : fit->end;
-    explain(fit->workspace->y, fit->begin, beyond, &few, next);
-    double complex expected = next[0] * cexp(lines->p[0] * ((double)from - (double)fit->begin));
-    if (cabs(c[0] - expected) < JUMP_LEAST * cabs(expected))
+    explain(fit->workspace->y, fit->begin, beyond, &few, next.c);
+    if (left_by(fit->workspace->y, from, to, fit->begin, &next) < JUMP_LEAST * JUMP_LEAST * whole)
         return;
     fit->break_kind = BREAK_HIT;
     fit->break_at = fit->begin;
@@ -256,9 +270,9 @@ void breaks_find(struct fit *fit)
         size_t right = at + reach < to ? at + reach : to;
         fit_side(fit, left, at, &lines, &before);
         fit_side(fit, at, right, &lines, &after);
-        double complex reached = at_break(before.c[0], before.p[0], at - left);
-        double jump = cabs(after.c[0] - reached) / fmax(cabs(after.c[0]), cabs(reached));
-        if (jump > JUMP_LEAST)
+        size_t near = at + 2 * block < right ? at + 2 * block : right;
+        double jump = left_by(y, at, near, left, &before) - left_by(y, at, near, at, &after);
+        if (jump > JUMP_LEAST * JUMP_LEAST * energy_of(y, at, near))
             classify(fit, &before, left, at, before.c, after.c);
     }
     segment_begin(segment, y + fit->begin, fit->end - fit->begin);

@@ -274,11 +274,9 @@ static bool drop_blow_poles(struct fit *fit)
     return has_dropped;
 }
 
-bool candidates_fit(struct fit *fit)
+static void search_all(struct fit *fit)
 {
     struct segment *segment = fit->segment;
-    segment_begin(segment, fit->workspace->y + fit->begin, fit->end - fit->begin);
-    add_known_poles(fit);
     for (int round = 0; round < ROUNDS_MAX; round++) {
         if (search_round(fit) == 0)
             break;
@@ -288,6 +286,36 @@ bool candidates_fit(struct fit *fit)
         }
         drop_weak_poles(fit);
     }
+}
+
+bool candidates_fit(struct fit *fit)
+{
+    segment_begin(fit->segment, fit->workspace->y + fit->begin, fit->end - fit->begin);
+    add_known_poles(fit);
+    search_all(fit);
+    doublets_resolve(fit);
+    return ring_count(fit->segment) > 0;
+}
+
+void candidates_refit(struct fit *fit)
+{
+    struct segment *segment = fit->segment;
+    const float *y = fit->workspace->y + fit->begin;
+    double moved = (double)(segment->y - y);
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        segment->poles[k].tail *= cexp(-segment->poles[k].p * moved);
+        segment->has_moments[k] = false;
+    }
+    segment->y = y;
+    segment->frame_count = fit->end - fit->begin;
+    refine_poles(segment, 12);
+}
+
+bool candidates_finish(struct fit *fit)
+{
+    struct segment *segment = fit->segment;
+    candidates_refit(fit);
+    search_all(fit);
     if (drop_blow_poles(fit)) {
         refine_poles(segment, 30);
         drop_weak_poles(fit);

@@ -43,7 +43,7 @@ void clip_count(struct fit *fit)
     const float *x = fit->strike->samples;
     float peak = 0;
     for (size_t n = fit->blow; n < fit->end; n++)
-        peak = fmaxf(peak, fabsf(x[n]));
+        peak = fabsf(x[n]) > peak ? fabsf(x[n]) : peak;
     if (peak < 1e-4f)
         return;
     /* The top of a slow sine is flat to within the grain for 2 sqrt(2 grain / (A w^2)) samples. */

@@ -20,10 +20,9 @@ static double doublet_score(struct fit *fit, unsigned k)
     const struct pole *pole = &segment->poles[k];
     double a = -creal(pole->p);
     size_t length = pole_length(pole, segment->frame_count);
-    struct moments moments = {.m = segment->moments[k].m};
+    struct moments moments = {.m = (double complex(*)[MOMENT_ORDERS])segment->spare_moments};
     size_t block = moments_block_for(length);
     moments_gather(fit->workspace->residual, length, pole->p, block, segment->table, &moments);
-    segment->has_moments[k] = false; /* their memory was lent */
     double complex sum = 0, step = cexp(pole->p * (double)block);
     double complex turn = cexp(pole->p * ((double)block - 1) / 2);
     for (size_t j = 0; j < moments.block_count; j++) {
@@ -107,7 +106,6 @@ static int find_wanting(struct fit *fit, const bool *is_done, double least)
             wanting = (int)k;
         }
     }
-    refine_amplitudes(segment);
     return wanting;
 }
 
@@ -137,9 +135,7 @@ static bool is_settled_pair(struct fit *fit, unsigned a, unsigned b)
     if (!is_real_pair(&segment->poles[a], &segment->poles[b]))
         return false;
     candidates_residual(fit);
-    bool is_left = has_line_beside(fit, a, b);
-    refine_amplitudes(segment);
-    return !is_left;
+    return !has_line_beside(fit, a, b);
 }
 
 /* Does one half of the pair want to be two again, by more than a real part's misfit? Then the three

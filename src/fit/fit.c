@@ -23,12 +23,13 @@ static bool allocate(struct fit_workspace *workspace, size_t frames_max)
     if (residual != NULL)
         workspace->residual = residual;
     double complex *pool =
-        realloc(segment->moment_pool, POLES_MAX * blocks * MOMENT_ORDERS * sizeof *pool);
+        realloc(segment->moment_pool, (POLES_MAX + 1) * blocks * MOMENT_ORDERS * sizeof *pool);
     if (pool != NULL)
         segment->moment_pool = pool;
     if (y == NULL || quiet == NULL || residual == NULL || pool == NULL)
         return false;
     segment->pool_blocks = blocks;
+    segment->spare_moments = pool + POLES_MAX * blocks * MOMENT_ORDERS;
     workspace->frames_max = frames_max;
     return true;
 }
@@ -119,7 +120,7 @@ static void set_levels(struct fit *fit, struct reading *reading)
 {
     float peak = 0;
     for (size_t n = fit->blow > 8 ? fit->blow - 8 : 0; n < fit->end; n++)
-        peak = fmaxf(peak, fabsf(fit->strike->samples[n]));
+        peak = fabsf(fit->strike->samples[n]) > peak ? fabsf(fit->strike->samples[n]) : peak;
     reading->peak_dbfs = 20 * log10(fmax((double)peak, 1e-10));
     reading->noise_dbfs = 10 * log10(2 * fit->noise.variance);
     reading->onset_frame = fit->onset;
@@ -203,6 +204,7 @@ static void examine(struct fit *fit)
         -creal(segment->poles[fit->lead_pole].p) * (double)(fit->break_at - fit->begin) >= 3) {
         fit->end = fit->break_at;
         candidates_fit(fit);
+        candidates_finish(fit);
     }
     if (fit->break_kind == BREAK_NONE && is_any_curved)
         curvature_measure(fit);
@@ -231,9 +233,11 @@ bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
     enum walk walk = WALK_MOVED;
     for (int i = 0; has_modes && walk == WALK_MOVED && i < WALKS_MAX; i++) {
         walk = window_walk_back(&fit);
-        if (walk != WALK_ENDED)
-            has_modes = candidates_fit(&fit);
+        if (walk == WALK_MOVED)
+            candidates_refit(&fit);
     }
+    if (has_modes)
+        has_modes = candidates_finish(&fit);
     if (has_modes)
         examine(&fit);
     uncertainty_fill(&fit, &reading);

@@ -49,7 +49,8 @@ bool lowq_search(struct fit *fit, struct candidate *out, bool *out_is_real)
 {
     const struct segment *segment = fit->segment;
     float *y = fit->workspace->residual; /* thinned in place, level by level */
-    size_t count = segment->frame_count;
+    size_t count = segment->frame_count, most = (size_t)(1.5 * fit->strike->rate_hz);
+    count = count < most ? count : most;
     double w_top = fmin(fit->w_high, 2 * WANE_PI / 8), w_low = fit->w_low;
     size_t thin = 1;
     double best = 0;

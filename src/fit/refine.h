@@ -29,6 +29,7 @@ struct segment {
     bool has_moments[POLES_MAX];
     double complex *moment_pool; /* [POLES_MAX x pool_blocks x MOMENT_ORDERS] */
     size_t pool_blocks;
+    double complex *spare_moments;     /* [pool_blocks x MOMENT_ORDERS], the doublet test's */
     float *table;                      /* [MOMENT_TABLE_FLOATS] */
     double *matrix;                    /* [PARAMETERS_MAX x PARAMETERS_MAX] */
     double complex (*pair_sums)[2][3]; /* [POLES_MAX x POLES_MAX][conjugate or not][n^m] */

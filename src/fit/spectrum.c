@@ -5,9 +5,11 @@
 #include <stdlib.h>
 #include <string.h>
 
-#define PI           3.14159265358979323846
-#define PLAN_COUNT   (SPECTRUM_LOG2_MAX + 1)
-#define PEAKS_A_GRID 12
+#define PI              3.14159265358979323846
+#define PLAN_COUNT      (SPECTRUM_LOG2_MAX + 1)
+#define BEFORE_LOG2_MAX 17
+#define PEAKS_A_GRID    12
+#define LEVEL_BINS      32
 /* The grid's decay rates are GRID_DECAY / length: the window has fallen to exp(-4) at its end, and
  * a mode that decays as fast as the window is matched. */
 #define GRID_DECAY 4.0
@@ -17,6 +19,11 @@ struct spectrum {
     float *in;          /* [2^SPECTRUM_LOG2_MAX] */
     fftwf_complex *out; /* [2^(SPECTRUM_LOG2_MAX - 1) + 1] */
     float *power;       /* as out */
+    float levels[((size_t)1 << (SPECTRUM_LOG2_MAX - 1)) / LEVEL_BINS + 1];
+    /* What spectrum_remember keeps of the samples before a strike. */
+    float *before; /* power, [2^(BEFORE_LOG2_MAX - 1) + 1] */
+    size_t before_bins;
+    double before_norm; /* (sum of the weights / 2)^2 */
 };
 
 struct spectrum *spectrum_create(void)
@@ -28,7 +35,9 @@ struct spectrum *spectrum_create(void)
     spectrum->in = fftwf_alloc_real(size);
     spectrum->out = fftwf_alloc_complex(size / 2 + 1);
     spectrum->power = fftwf_alloc_real(size / 2 + 1);
-    bool is_made = spectrum->in != NULL && spectrum->out != NULL && spectrum->power != NULL;
+    spectrum->before = fftwf_alloc_real(((size_t)1 << (BEFORE_LOG2_MAX - 1)) + 1);
+    bool is_made = spectrum->before != NULL && spectrum->in != NULL && spectrum->out != NULL &&
+                   spectrum->power != NULL;
     for (int i = SPECTRUM_LOG2_MIN; is_made && i <= SPECTRUM_LOG2_MAX; i++) {
         spectrum->plans[i] =
             fftwf_plan_dft_r2c_1d(1 << i, spectrum->in, spectrum->out, FFTW_ESTIMATE);
@@ -52,6 +61,7 @@ void spectrum_destroy(struct spectrum *spectrum)
     fftwf_free(spectrum->in);
     fftwf_free(spectrum->out);
     fftwf_free(spectrum->power);
+    fftwf_free(spectrum->before);
     free(spectrum);
 }
 
@@ -140,31 +150,43 @@ void spectrum_measure_noise(struct spectrum *spectrum, const float *y, size_t co
     out_noise->is_measured = frames > 0 && sum > 0;
     smooth(raw, bins, out_noise->density);
     double total = 0;
+    out_noise->lowest = INFINITY;
     for (size_t i = 0; i <= bins; i++) {
         out_noise->density[i] = fmax(out_noise->density[i], least);
+        out_noise->lowest = fmin(out_noise->lowest, out_noise->density[i]);
         total += out_noise->density[i];
     }
     out_noise->variance = total / (double)(bins + 1);
 }
 
-/* Robust local level: the mean of the lower half of the neighbours' powers, by a histogram-free
- * quickselect on a small copy; 24 bins to each side. */
 static int compare_floats(const void *a, const void *b)
 {
     float x = *(const float *)a, y = *(const float *)b;
     return (x > y) - (x < y);
 }
 
-static double local_level(const float *power, size_t i, size_t bins)
+/* Mean power of the noise in each stretch of LEVEL_BINS bins, by the lower quartile, which lines do
+ * not lift: the first quartile of an exponential distribution is 0.2877 of its mean. */
+static void measure_levels(struct spectrum *spectrum, size_t bins)
 {
-    float near[49];
-    size_t n = 0;
-    size_t from = i > 24 ? i - 24 : 1, to = i + 24 < bins ? i + 24 : bins;
-    for (size_t k = from; k <= to; k++)
-        near[n++] = power[k];
-    qsort(near, n, sizeof *near, compare_floats);
-    /* The first quartile of an exponential distribution is 0.2877 of its mean. */
-    return (double)near[n / 4] / 0.2877;
+    for (size_t at = 0; at * LEVEL_BINS < bins; at++) {
+        float near[LEVEL_BINS];
+        size_t from = at * LEVEL_BINS, n = 0;
+        for (size_t i = from; i < from + LEVEL_BINS && i <= bins; i++)
+            if (i > 0)
+                near[n++] = spectrum->power[i];
+        qsort(near, n, sizeof *near, compare_floats);
+        spectrum->levels[at] = near[n / 4] / 0.2877f;
+    }
+}
+
+static double local_level(const struct spectrum *spectrum, size_t i, size_t bins)
+{
+    size_t at = i / LEVEL_BINS, last = (bins - 1) / LEVEL_BINS;
+    size_t other = i % LEVEL_BINS < LEVEL_BINS / 2 ? (at > 0 ? at - 1 : at) : at + 1;
+    other = other > last ? last : other;
+    at = at > last ? last : at;
+    return 0.5 * ((double)spectrum->levels[at] + (double)spectrum->levels[other]);
 }
 
 struct peak {
@@ -188,6 +210,33 @@ static void keep_peak(struct peak *peaks, unsigned *count, unsigned max, struct 
     peaks[at] = peak;
 }
 
+void spectrum_remember(struct spectrum *spectrum, const float *y, size_t count)
+{
+    int log2 = log2_up(count);
+    log2 = log2 > BEFORE_LOG2_MAX ? BEFORE_LOG2_MAX : log2;
+    spectrum->before_bins = 0;
+    if (count > (size_t)1 << log2)
+        count = (size_t)1 << log2;
+    if (count < 64)
+        return;
+    put_hann(spectrum, y, count, log2);
+    fftwf_execute_dft_r2c(spectrum->plans[log2], spectrum->in, spectrum->out);
+    spectrum->before_bins = (size_t)1 << (log2 - 1);
+    for (size_t i = 0; i <= spectrum->before_bins; i++)
+        spectrum->before[i] = (float)power_at(spectrum, i);
+    spectrum->before_norm = (double)count * (double)count / 16;
+}
+
+double spectrum_amplitude_before(const struct spectrum *spectrum, double w)
+{
+    size_t bins = spectrum->before_bins;
+    size_t i = (size_t)(w / PI * (double)bins);
+    if (bins == 0 || i + 1 > bins)
+        return 0;
+    double power = fmax((double)spectrum->before[i], (double)spectrum->before[i + 1]);
+    return sqrt(power / spectrum->before_norm);
+}
+
 unsigned spectrum_find_lines(struct spectrum *spectrum, const float *y, size_t count, double w_low,
                              double w_high, unsigned max, double *out_w)
 {
@@ -202,6 +251,7 @@ unsigned spectrum_find_lines(struct spectrum *spectrum, const float *y, size_t c
     fftwf_execute_dft_r2c(spectrum->plans[log2], spectrum->in, spectrum->out);
     for (size_t i = 0; i <= bins; i++)
         spectrum->power[i] = (float)power_at(spectrum, i);
+    measure_levels(spectrum, bins);
     size_t from = (size_t)fmax(2, ceil(w_low / PI * (double)bins));
     size_t to = (size_t)fmin((double)bins - 2, w_high / PI * (double)bins);
     struct peak lines[POLES_MAX];
@@ -215,7 +265,7 @@ unsigned spectrum_find_lines(struct spectrum *spectrum, const float *y, size_t c
             continue;
         /* In noise a bin exceeds 20 times the mean once in 5e8; most of that margin goes to the
          * scatter of the level itself. */
-        if (p > 20 * local_level(power, i, bins))
+        if (p > 20 * local_level(spectrum, i, bins))
             keep_peak(lines, &found, max, (struct peak){i, p});
     }
     for (unsigned k = 0; k < found; k++) {
@@ -316,11 +366,11 @@ static void scan_grid(struct spectrum *spectrum, const struct grid *grid, const 
     double unit = PI / (double)bins;
     size_t from = (size_t)fmax(1, ceil(w_low / unit));
     size_t to = (size_t)fmin((double)bins - 1, w_high / unit);
-    double least = threshold * grid->norm;
+    double least = threshold * grid->norm, lowest = least * noise->lowest;
     double before = power_at(spectrum, from - 1), here = power_at(spectrum, from);
     for (size_t i = from; i <= to; i++) {
         double after = power_at(spectrum, i + 1);
-        if (here > before && here >= after) {
+        if (here > lowest && here > before && here >= after) {
             double density = noise_density(noise, (double)i * unit);
             if (here > least * density)
                 keep_peak(peaks, peak_count, PEAKS_A_GRID,
@@ -362,7 +412,7 @@ unsigned spectrum_search(struct spectrum *spectrum, const float *y, size_t count
 {
     struct candidate kept[CANDIDATES_MAX];
     unsigned kept_count = 0;
-    int last = log2_up(count);
+    int last = log2_up(count < noise->search_count ? count : noise->search_count);
     for (int log2 = last; log2 >= SPECTRUM_LOG2_MIN; log2--) {
         struct grid grid = {.length = (size_t)1 << log2};
         grid.count = count < grid.length ? count : grid.length;

@@ -23,8 +23,10 @@ void spectrum_destroy(struct spectrum *spectrum);
 struct noise {
     double density[NOISE_BINS_MAX + 1];
     size_t bins;
-    double variance;  /* mean of the density */
-    bool is_measured; /* false: there was nothing before the strike to measure it from */
+    double variance;     /* mean of the density */
+    double lowest;       /* the density's lowest value */
+    size_t search_count; /* samples that the search looks at, at most */
+    bool is_measured;    /* false: there was nothing before the strike to measure it from */
 };
 
 /* Density at w rad a sample, 0 ... pi. */
@@ -35,6 +37,11 @@ double noise_density(const struct noise *noise, double w);
  * `least` > 0 bounds the density from below (the grain of the samples). */
 void spectrum_measure_noise(struct spectrum *spectrum, const float *y, size_t count, double least,
                             struct noise *out_noise);
+
+/* Keeps the spectrum of what came before a strike, and gives the amplitude that a steady tone at w
+ * would have had in it. */
+void spectrum_remember(struct spectrum *spectrum, const float *y, size_t count);
+double spectrum_amplitude_before(const struct spectrum *spectrum, double w);
 
 /* Frequencies (rad a sample) of lines in y [count] that stand out of their surroundings, strongest
  * first; at most `max`. Returns how many. */

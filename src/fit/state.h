@@ -70,6 +70,11 @@ enum walk window_walk_back(struct fit *fit);
 
 /* modes: candidates.c. Fits all modes from fit->begin on; false when nothing could be solved. */
 bool candidates_fit(struct fit *fit);
+/* The same modes from a new fit->begin or to a new fit->end on, refined. */
+void candidates_refit(struct fit *fit);
+/* The last of it: quick modes that only now show, those that were the blow dropped, doublets split.
+ */
+bool candidates_finish(struct fit *fit);
 /* residual = samples - model over the fitted span. */
 void candidates_residual(struct fit *fit);
 

@@ -101,18 +101,7 @@ bool window_was_there_before(const struct fit *fit, const struct pole *pole)
     size_t count = fit->quiet_end;
     if (count < 64 || pole->is_carried)
         return false;
-    double complex turn = cexp(-J * cimag(pole->p)), at = 1;
-    double complex hann = cexp(J * 2 * WANE_PI / (double)count), window = 1;
-    double complex sum = 0;
-    double norm = 0;
-    for (size_t n = 0; n < count; n++) {
-        double w = 0.5 - 0.5 * creal(window);
-        sum += (double)fit->workspace->y[n] * w * at;
-        norm += w;
-        at *= turn;
-        window *= hann;
-    }
-    double amplitude = 2 * cabs(sum) / norm;
+    double amplitude = spectrum_amplitude_before(fit->workspace->spectrum, cimag(pole->p));
     double noise = 6 * noise_density(&fit->noise, cimag(pole->p)) / (double)count;
     double at_onset = cabs(pole->c * cexp(-pole->p * ((double)fit->begin - fit->onset)));
     return amplitude * amplitude > 12 * noise && amplitude > 0.4 * at_onset;
@@ -144,6 +133,7 @@ void window_prepare(struct fit *fit)
         fit->lost_frames = (double)strike->lost[i].frames;
     }
     take_offset_out(fit);
+    spectrum_remember(workspace->spectrum, workspace->y, fit->quiet_end);
     float *quiet = workspace->quiet;
     memcpy(quiet, workspace->y, fit->quiet_end * sizeof *quiet);
     subtract_carried(fit, quiet, fit->quiet_end);
@@ -156,6 +146,9 @@ void window_prepare(struct fit *fit)
         spectrum_measure_noise(workspace->spectrum, workspace->y + from, tail, GRAIN_24_BIT,
                                &fit->noise);
     }
+    /* Longer transforms gain little for modes that anyone could still read, and cost most of the
+     * search's time. */
+    fit->noise.search_count = (size_t)(1.3 * strike->rate_hz);
     fit->blow = find_blow(fit);
     fit->onset = (double)fit->blow;
 }
