@@ -211,6 +211,25 @@ static void examine(struct fit *fit)
     verdict_measure(fit);
 }
 
+/* Walks to the onset; where a quick mode only shows on the way, with it once more. */
+static bool settle(struct fit *fit)
+{
+    for (int again = 0; again < 3; again++) {
+        enum walk walk = WALK_MOVED;
+        for (int i = 0; walk == WALK_MOVED && i < WALKS_MAX; i++) {
+            walk = window_walk_back(fit);
+            if (walk == WALK_MOVED)
+                candidates_refit(fit);
+        }
+        unsigned before = fit->segment->pole_count;
+        if (!candidates_finish(fit))
+            return false;
+        if (walk == WALK_CLEAN || fit->segment->pole_count <= before)
+            break;
+    }
+    return true;
+}
+
 bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
                 const struct fit_settings *settings, struct reading *out_reading, struct error *err)
 {
@@ -230,14 +249,7 @@ bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
     fit.segment->negligible = 1e-5 * fit.noise.variance;
     fit.begin = window_first_begin(&fit);
     bool has_modes = candidates_fit(&fit);
-    enum walk walk = WALK_MOVED;
-    for (int i = 0; has_modes && walk == WALK_MOVED && i < WALKS_MAX; i++) {
-        walk = window_walk_back(&fit);
-        if (walk == WALK_MOVED)
-            candidates_refit(&fit);
-    }
-    if (has_modes)
-        has_modes = candidates_finish(&fit);
+    has_modes = has_modes && settle(&fit);
     if (has_modes)
         examine(&fit);
     uncertainty_fill(&fit, &reading);
