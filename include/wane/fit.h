@@ -15,7 +15,7 @@ struct fit_settings {
     double coupling_hz;     /* corner of the input's AC coupling, first order; 0: none or unknown */
     double not_exponential; /* early and late rate may differ by this share; automatic 0.05 */
     double gliding;         /* f may move by this share; automatic 1e-4 */
-    unsigned modes_max;     /* 1 ... READING_MODES_MAX; 0: automatic, 10 */
+    unsigned modes_max;     /* 1 ... READING_MODES_MAX; 0: automatic, all of them */
     double clock_ppm;       /* the sample clock runs fast by this much: f and decay are multiplied
                                by 1 - clock_ppm * 1e-6 ... see `wane clock` */
 };

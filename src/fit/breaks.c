@@ -13,7 +13,7 @@
 #define LINES_MAX    5
 #define CONTACT_S    0.0055 /* a break nearer to the onset is the blow's own end */
 #define SUSPECT      0.05   /* of a block's energy unexplained: something happened there */
-#define JUMP_LEAST   0.25   /* of the lead's amplitude: less is the part's own unsteadiness */
+#define JUMP_LEAST   0.2    /* of the lead's amplitude: less is the part's own unsteadiness */
 #define STEADY_RATIO 0.2    /* amplitudes of both sides alike within this: nothing hit the part */
 
 struct lines {
@@ -113,8 +113,20 @@ static bool find_suspect(struct fit *fit, size_t block, size_t *out_first, size_
     candidates_residual(fit);
     const float *r = fit->workspace->residual;
     const float *y = fit->segment->y;
-    double noise = fit->noise.variance * (double)block;
+    double noise = fit->noise.variance / fit->misfit * (double)block;
     bool is_suspect = false;
+    /* Before the fitted span, too: its begin may lie just behind a second blow. */
+    size_t early = fit->blow + (size_t)(0.002 * fit->strike->rate_hz);
+    for (size_t at = early; at + block <= fit->begin; at += block) {
+        double whole = energy_of(fit->workspace->y, at, at + block);
+        double left = window_left(fit, at, block) * (double)block;
+        if (left < 10 * noise || left < SUSPECT * whole)
+            continue;
+        if (!is_suspect)
+            *out_first = at;
+        *out_last = at + block;
+        is_suspect = true;
+    }
     for (size_t at = 0; at + block <= fit->segment->frame_count; at += block) {
         double left = energy_of(r, at, at + block), whole = energy_of(y, at, at + block);
         if (left < 10 * noise || left < SUSPECT * whole)
@@ -175,6 +187,22 @@ static double left_by(const float *y, size_t from, size_t to, size_t origin,
     return left;
 }
 
+/* The strongest lines that lie at least `apart` from each other: closer ones act as one in a span
+ * that short. */
+static void keep_apart(const struct lines *lines, unsigned most, double apart, struct lines *out)
+{
+    out->count = 0;
+    for (unsigned k = 0; k < lines->count && out->count < most; k++) {
+        bool is_apart = true;
+        for (unsigned l = 0; l < out->count; l++)
+            is_apart = is_apart && fabs(cimag(lines->p[k] - out->p[l])) > apart;
+        if (is_apart) {
+            out->c[out->count] = lines->c[k];
+            out->p[out->count++] = lines->p[k];
+        }
+    }
+}
+
 /* The blow that takes longer than a blow: the same ring, with another amplitude, was there before.
  */
 static void look_before_begin(struct fit *fit, const struct lines *lines)
@@ -182,25 +210,37 @@ static void look_before_begin(struct fit *fit, const struct lines *lines)
     double rate = fit->strike->rate_hz;
     size_t from = fit->blow + (size_t)(0.001 * rate), to = fit->begin;
     size_t margin = (size_t)(0.0005 * rate);
-    if (fit->is_clean_onset || to < from + 2 * margin + 32 ||
+    /* A walk that did not come off its first step ended on the part's misfit, not on a blow. */
+    if (fit->is_clean_onset || fit->begin >= fit->first_begin || to < from + 2 * margin + 32 ||
         (double)(to - fit->blow) < CONTACT_S * rate)
         return;
     to -= margin;
     double cycles = cimag(lines->p[0]) * (double)(to - from) / (2 * WANE_PI);
-    struct lines few = *lines;
     unsigned bearable = cycles < 2.5 ? 1 : cycles < 5 ? 2 : 3;
-    few.count = few.count > bearable ? bearable : few.count;
+    struct lines few;
+    keep_apart(lines, bearable, 2 * WANE_PI / (double)(to - from), &few);
     double complex c[LINES_MAX];
     double whole = energy_of(fit->workspace->y, from, to);
     double noise = fit->noise.variance * (double)(to - from);
-    if (cycles < 1 || whole < 20 * noise ||
-        explain(fit->workspace->y, from, to, &few, c) < 0.85 * whole)
+    double explained = explain(fit->workspace->y, from, to, &few, c);
+    if (cycles < 1 || whole < 20 * noise || explained < 0.85 * whole)
         return;
     /* The same blow's ring, only not quite the model, goes on where it was. */
     struct lines next = few;
     size_t beyond = fit->begin + (to - from) < fit->end ? fit->begin + (to - from) : fit->end;
     explain(fit->workspace->y, fit->begin, beyond, &few, next.c);
-    if (left_by(fit->workspace->y, from, to, fit->begin, &next) < JUMP_LEAST * JUMP_LEAST * whole)
+    double jump = left_by(fit->workspace->y, from, to, fit->begin, &next) - (whole - explained);
+#ifdef FIT_DEBUG
+    fprintf(stderr, "LOOKBACK lines %u from %zu to %zu explained %.3g jump %.3g;", few.count,
+            from - fit->blow, to - fit->blow, explained / whole, jump / explained);
+    for (unsigned k = 0; k < few.count; k++)
+        fprintf(stderr, " %.1f Hz %.3g/s: %.3g -> %.3g (%.2f rad)",
+                cimag(few.p[k]) * 44100 / 6.2832, -creal(few.p[k]) * 44100, cabs(c[k]),
+                cabs(next.c[k] * cexp(few.p[k] * ((double)from - (double)fit->begin))),
+                carg(c[k] / (next.c[k] * cexp(few.p[k] * ((double)from - (double)fit->begin)))));
+    fprintf(stderr, "\n");
+#endif
+    if (jump < JUMP_LEAST * JUMP_LEAST * explained)
         return;
     fit->break_kind = BREAK_HIT;
     fit->break_at = fit->begin;
@@ -265,7 +305,7 @@ void breaks_find(struct fit *fit)
     unsigned pole_count = segment->pole_count;
     double explained = segment->explained;
     memcpy(poles, segment->poles, sizeof poles);
-    if (at > 0) {
+    if (at > 0 && (double)(at - fit->blow) >= 0.005 * rate) {
         size_t left = at > from + reach ? at - reach : from;
         size_t right = at + reach < to ? at + reach : to;
         fit_side(fit, left, at, &lines, &before);

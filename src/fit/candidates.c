@@ -12,7 +12,7 @@
 #define NEAR_WIDTHS  12
 #define NEAR_SHARE   0.01
 #define CLOSE_WIDTHS 4
-#define ENERGY_SHARE 1e-7  /* of the whole: weaker modes do not matter to anyone */
+#define ENERGY_SHARE 1e-6  /* of the whole: weaker modes do not matter to anyone */
 #define A_MAX        1.5   /* per sample */
 #define BLOW_S       0.005 /* the longest contact of a usual tap */
 

@@ -98,7 +98,7 @@ static int find_wanting(struct fit *fit, const bool *is_done, double least)
     int wanting = -1;
     candidates_residual(fit);
     for (unsigned k = 0; k < segment->pole_count; k++) {
-        if (segment->poles[k].kind != POLE_RING || is_done[k])
+        if (segment->poles[k].kind != POLE_RING || segment->poles[k].is_half || is_done[k])
             continue;
         double score = doublet_score(fit, k);
         if (score > least) {
@@ -176,7 +176,7 @@ void doublets_resolve(struct fit *fit)
         bool is_split = try_split(fit, one);
         is_done[one] = true;
         if (is_split && is_settled_pair(fit, one, count) && !is_crowd(fit, one, count)) {
-            is_done[count] = true;
+            segment->poles[one].is_half = segment->poles[count].is_half = true;
             continue;
         }
         if (!is_split)

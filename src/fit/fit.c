@@ -7,7 +7,8 @@
 #include <stdlib.h>
 #include <string.h>
 
-#define WALKS_MAX 12
+#define MISFIT_MOST 0.03 /* of the ring's energy: more is no misfit but another thing */
+#define WALKS_MAX   12
 
 static bool allocate(struct fit_workspace *workspace, size_t frames_max)
 {
@@ -92,7 +93,7 @@ static bool resolve_settings(const struct fit_settings *given, double rate_hz,
     if (out->gliding <= 0)
         out->gliding = 1e-4;
     if (out->modes_max == 0)
-        out->modes_max = 10;
+        out->modes_max = READING_MODES_MAX;
     if (out->modes_max > READING_MODES_MAX)
         return error_set(err, ERROR_USAGE,
                          "at most %d modes can be read at once, not %u: ask for fewer",
@@ -122,7 +123,7 @@ static void set_levels(struct fit *fit, struct reading *reading)
     for (size_t n = fit->blow > 8 ? fit->blow - 8 : 0; n < fit->end; n++)
         peak = fabsf(fit->strike->samples[n]) > peak ? fabsf(fit->strike->samples[n]) : peak;
     reading->peak_dbfs = 20 * log10(fmax((double)peak, 1e-10));
-    reading->noise_dbfs = 10 * log10(2 * fit->noise.variance);
+    reading->noise_dbfs = 10 * log10(2 * fit->noise.variance / fit->misfit);
     reading->onset_frame = fit->onset;
     reading->window_begin_frame = (double)fit->begin;
     reading->window_end_frame = (double)fit->end;
@@ -206,9 +207,38 @@ static void examine(struct fit *fit)
         candidates_fit(fit);
         candidates_finish(fit);
     }
-    if (fit->break_kind == BREAK_NONE && is_any_curved)
+    if (fit->break_kind == BREAK_NONE && (is_any_curved || fit->misfit > 1))
         curvature_measure(fit);
     verdict_measure(fit);
+}
+
+/* No real part is exactly the model. What the first fit leaves, where it is more than the noise but
+ * little beside the ring, is misfit: from here on it counts as noise, in the tests that decide on
+ * modes and begin, and in the uncertainties. */
+static void allow_for_misfit(struct fit *fit)
+{
+    const struct segment *segment = fit->segment;
+    double slowest = INFINITY, left = 0, whole = 0;
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        if (segment->poles[k].kind == POLE_RING)
+            slowest = fmin(slowest, -creal(segment->poles[k].p));
+    }
+    candidates_residual(fit);
+    const float *r = fit->workspace->residual;
+    size_t span = (size_t)fmin(1 / slowest, (double)segment->frame_count);
+    for (size_t n = 0; n < span; n++) {
+        left += (double)r[n] * (double)r[n];
+        whole += (double)segment->y[n] * (double)segment->y[n];
+    }
+    double excess = left / ((double)span * fit->noise.variance);
+    if (span < 64 || excess < 1 + 6 * sqrt(2.0 / (double)span) || excess < 1.5 ||
+        left > MISFIT_MOST * whole)
+        return;
+    for (size_t i = 0; i <= fit->noise.bins; i++)
+        fit->noise.density[i] *= excess;
+    fit->noise.variance *= excess;
+    fit->noise.lowest *= excess;
+    fit->misfit = excess;
 }
 
 /* Walks to the onset; where a quick mode only shows on the way, with it once more. */
@@ -244,11 +274,14 @@ bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
     reading_init(&reading);
     fit.w_low = 2 * WANE_PI * fit.settings.f_low_hz / strike->rate_hz;
     fit.w_high = 2 * WANE_PI * fit.settings.f_high_hz / strike->rate_hz;
+    fit.misfit = 1;
     fit.segment->negligible = 0;
     window_prepare(&fit);
     fit.segment->negligible = 1e-5 * fit.noise.variance;
-    fit.begin = window_first_begin(&fit);
+    fit.begin = fit.first_begin = window_first_begin(&fit);
     bool has_modes = candidates_fit(&fit);
+    if (has_modes)
+        allow_for_misfit(&fit);
     has_modes = has_modes && settle(&fit);
     if (has_modes)
         examine(&fit);

@@ -28,6 +28,7 @@ enum pole_kind {
 struct pole {
     enum pole_kind kind;
     bool is_carried;     /* an earlier strike left this mode ringing: `tail` of it */
+    bool is_half;        /* of a doublet: not split again */
     bool is_fixed;       /* p is known, only c is free */
     double complex p;    /* per sample */
     double complex c;    /* at the segment's first sample */

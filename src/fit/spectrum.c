@@ -126,8 +126,30 @@ static void smooth(const double *raw, size_t bins, double *out)
     }
 }
 
+static int compare_doubles(const void *a, const void *b)
+{
+    double x = *(const double *)a, y = *(const double *)b;
+    return (x > y) - (x < y);
+}
+
+/* Lower quartile of the surroundings, which the lines of a ring do not lift. For a mean of K
+ * exponentials it lies about 0.67 / sqrt(K) of the mean below it. */
+static void smooth_between_lines(const double *raw, size_t bins, size_t frames, double *out)
+{
+    double factor = 1 / fmax(0.3, 1 - 0.67 / sqrt((double)frames));
+    for (size_t i = 0; i <= bins; i++) {
+        double near[49];
+        size_t n = 0;
+        size_t from = i > 24 ? i - 24 : 1, to = i + 24 < bins ? i + 24 : bins;
+        for (size_t k = from; k <= to; k++)
+            near[n++] = raw[k];
+        qsort(near, n, sizeof *near, compare_doubles);
+        out[i] = near[n / 4] * factor;
+    }
+}
+
 void spectrum_measure_noise(struct spectrum *spectrum, const float *y, size_t count, double least,
-                            struct noise *out_noise)
+                            enum noise_kind kind, struct noise *out_noise)
 {
     int log2 = SPECTRUM_LOG2_MIN;
     while (((size_t)1 << (log2 + 1)) <= NOISE_BINS_MAX * 2 && ((size_t)4 << log2) <= count)
@@ -148,7 +170,10 @@ void spectrum_measure_noise(struct spectrum *spectrum, const float *y, size_t co
         sum += raw[i];
     }
     out_noise->is_measured = frames > 0 && sum > 0;
-    smooth(raw, bins, out_noise->density);
+    if (kind == NOISE_BETWEEN_LINES && frames > 0)
+        smooth_between_lines(raw, bins, frames, out_noise->density);
+    else
+        smooth(raw, bins, out_noise->density);
     double total = 0;
     out_noise->lowest = INFINITY;
     for (size_t i = 0; i <= bins; i++) {

@@ -35,8 +35,12 @@ double noise_density(const struct noise *noise, double w);
 /* Welch's method (Hann frames, half overlap), smoothed over a few bins, from y [count]. With fewer
  * than 64 samples, or all of them zero, is_measured stays false and the density is `least`.
  * `least` > 0 bounds the density from below (the grain of the samples). */
+enum noise_kind {
+    NOISE_ALONE,         /* y holds noise and nothing else */
+    NOISE_BETWEEN_LINES, /* a ring is in it: only what lies between its lines counts */
+};
 void spectrum_measure_noise(struct spectrum *spectrum, const float *y, size_t count, double least,
-                            struct noise *out_noise);
+                            enum noise_kind kind, struct noise *out_noise);
 
 /* Keeps the spectrum of what came before a strike, and gives the amplitude that a steady tone at w
  * would have had in it. */

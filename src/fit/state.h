@@ -37,6 +37,7 @@ struct fit {
     double tone_variance; /* of all tones together */
     size_t quiet_end;     /* samples before it are noise */
     size_t blow;          /* first loud sample */
+    size_t first_begin;   /* of the first fit, before the walk back */
     size_t begin, end;    /* the fitted span; the segment's first sample is samples[begin] */
     double onset;
     bool is_clean_onset;       /* the ring begins at the onset, no blow between */
@@ -54,6 +55,7 @@ struct fit {
     size_t lost_at;          /* where the driver says that frames are missing; 0: nowhere */
     double quietest;    /* power of the ring's quietest 10 ms over the noise before; 0: unknown */
     double noise_after; /* variance in the window's last part over the noise before; 0: unknown */
+    double misfit;      /* by how much what the modes leave exceeds the noise, 1: not at all */
     double unexplained; /* share of the energy */
 };
 
@@ -61,6 +63,8 @@ struct fit {
 void window_prepare(struct fit *fit);
 /* Was a line as strong as this mode there before the strike? Then it is no mode of it. */
 bool window_was_there_before(const struct fit *fit, const struct pole *pole);
+/* Mean square of the samples [from, from + count) less the model. */
+double window_left(const struct fit *fit, size_t from, size_t count);
 size_t window_first_begin(const struct fit *fit);
 /* Walks fit->begin back towards the onset as far as the ring found so far explains the samples.
  * WALK_CLEAN: silence was reached and fit->onset is the sample-exact change point. After WALK_MOVED

@@ -43,12 +43,30 @@ static void fill_from_pole(const struct fit *fit, const struct pole *pole, doubl
     mode->phase_rad = carg(c);
 }
 
+/* A quick pole on top of a stronger, slower one at the same frequency is that mode's own beginning,
+ * while the blow's traces settle: modelled, not reported. */
+static bool is_companion(const struct segment *segment, const struct pole *pole)
+{
+    double a = -creal(pole->p), energy = creal(pole->c * conj(pole->c)) / a;
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        const struct pole *other = &segment->poles[k];
+        double a_other = -creal(other->p);
+        if (other != pole && other->kind == POLE_RING && a > 4 * a_other &&
+            fabs(cimag(other->p - pole->p)) < a &&
+            energy < creal(other->c * conj(other->c)) / a_other)
+            return true;
+    }
+    return false;
+}
+
 /* A carried mode belongs to this strike too when it is not what the earlier one left; modes below
  * or above the range are fitted and left out. */
 static bool is_of_this_strike(const struct fit *fit, const struct pole *pole)
 {
     double w = cimag(pole->p);
     if (w < fit->w_low || w > fit->w_high || window_was_there_before(fit, pole))
+        return false;
+    if (is_companion(fit->segment, pole))
         return false;
     return !pole->is_carried || cabs(pole->c - pole->tail) > 0.1 * cabs(pole->tail);
 }

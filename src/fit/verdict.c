@@ -3,6 +3,9 @@
 
 #include <math.h>
 #include <stdlib.h>
+#ifdef FIT_DEBUG
+#include <stdio.h>
+#endif
 #include <string.h>
 
 static void add(struct reading *reading, enum reason reason, enum verdict verdict)
@@ -42,7 +45,7 @@ static double quietest_block(const struct fit *fit)
             sum += (double)fit->segment->y[n] * (double)fit->segment->y[n];
         least = fmin(least, sum / (double)block);
     }
-    return isfinite(least) ? least / fit->noise.variance : 0;
+    return isfinite(least) ? least / fit->noise.variance * fit->misfit : 0;
 }
 
 void verdict_measure(struct fit *fit)
@@ -59,15 +62,15 @@ void verdict_measure(struct fit *fit)
     }
     double noise = fit->noise.variance * (double)span;
     double tones = fit->tone_variance * (double)span;
-    fit->unexplained = fmax(0, left - noise - 4 * fit->noise.variance * sqrt((double)span)) /
+    fit->unexplained = fmax(0, left - 2 * noise - 4 * fit->noise.variance * sqrt((double)span)) /
                        fmax(whole - noise - tones, 1e-30);
     size_t tail = segment->frame_count / 4;
     if (!fit->noise.is_measured || fit->is_noise_from_tail || tail < 256)
         return;
     struct noise after;
     spectrum_measure_noise(fit->workspace->spectrum, r + segment->frame_count - tail, tail, 1e-16,
-                           &after);
-    fit->noise_after = median_ratio(&after, &fit->noise);
+                           NOISE_ALONE, &after);
+    fit->noise_after = median_ratio(&after, &fit->noise) * fit->misfit;
     fit->quietest = quietest_block(fit);
 }
 
@@ -121,7 +124,8 @@ static void judge_lead(const struct fit *fit, struct reading *reading)
     }
     bool has_risen = fit->noise_after > 2;
     if (relative_u > 0.1 || has_risen) {
-        reading->why.noise_dbfs = 10 * log10(2 * fit->noise.variance * fmax(fit->noise_after, 1));
+        reading->why.noise_dbfs =
+            10 * log10(2 * fit->noise.variance / fit->misfit * fmax(fit->noise_after, 1));
         add(reading, REASON_NOISY, relative_u > 0.3 ? VERDICT_REJECTED : VERDICT_DOUBTFUL);
     }
     /* The band that a mode fills: its half-power width, a / pi cycles a sample on both sides of
@@ -146,18 +150,23 @@ static void judge_curvature(struct fit *fit, struct reading *reading)
     double a = -creal(fit->segment->poles[fit->lead_pole].p) * rate;
     double w = cimag(fit->segment->poles[fit->lead_pole].p);
     double moved = fabs(cimag(lead->early - lead->late));
+#ifdef FIT_DEBUG
+    fprintf(stderr,
+            "EARLYLATE a %.4g early %.4g late %.4g u %.3g  f move %.3g ppm u %.3g misfit %.3g\n", a,
+            early, late, lead->u_a * rate, moved / w * 1e6, lead->u_w / w * 1e6, fit->misfit);
+#endif
     bool is_bent = fabs(early - late) > 3 * lead->u_a * rate &&
                    fabs(early - late) > fit->settings.not_exponential * a;
-    if (is_bent) {
-        double loss = 1 - exp((early - late) * 0.6 / a);
-        if (late > early && clip_is_bent(fit, loss)) {
-            reading->why.clipped_for_s = 1 / a;
-            add(reading, REASON_CLIPPED, VERDICT_DOUBTFUL);
-        } else {
-            reading->why.early_per_s = early;
-            reading->why.late_per_s = late;
-            add(reading, REASON_NOT_EXPONENTIAL, VERDICT_DOUBTFUL);
-        }
+    /* A bent input is looked for below that, too: its harmonics give it away. */
+    double loss = 1 - exp((early - late) * 0.6 / a);
+    bool has_moved = fabs(early - late) * sqrt(fit->misfit) > 3 * lead->u_a * rate;
+    if (has_moved && loss > 0.003 && clip_is_bent(fit, loss)) {
+        reading->why.clipped_for_s = 1 / a;
+        add(reading, REASON_CLIPPED, VERDICT_DOUBTFUL);
+    } else if (is_bent) {
+        reading->why.early_per_s = early;
+        reading->why.late_per_s = late;
+        add(reading, REASON_NOT_EXPONENTIAL, VERDICT_DOUBTFUL);
     }
     if (moved > 3 * lead->u_w && moved > fit->settings.gliding * w) {
         reading->why.early_hz = cimag(lead->early) * rate / (2 * WANE_PI);

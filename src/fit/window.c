@@ -13,6 +13,10 @@
 /* Least variance a sample: the grain of 24-bit samples, step^2 / 12. */
 #define GRAIN_24_BIT 1.18e-15
 
+/* No input that listens is quieter than -100 dBFS (16-bit samples alone have -98): below it the
+ * span before the strike was made by an editor, and says nothing of the noise in the ring. */
+#define DIGITAL_SILENCE 5e-11
+
 /* Takes carried modes out of residual [0, count) as predicted from the strike before. */
 static void subtract_carried(const struct fit *fit, float *y, size_t count)
 {
@@ -138,13 +142,14 @@ void window_prepare(struct fit *fit)
     memcpy(quiet, workspace->y, fit->quiet_end * sizeof *quiet);
     subtract_carried(fit, quiet, fit->quiet_end);
     find_tones(fit, quiet, fit->quiet_end);
-    spectrum_measure_noise(workspace->spectrum, quiet, fit->quiet_end, GRAIN_24_BIT, &fit->noise);
-    if (!fit->noise.is_measured || fit->noise.variance < 2 * GRAIN_24_BIT) {
+    spectrum_measure_noise(workspace->spectrum, quiet, fit->quiet_end, GRAIN_24_BIT, NOISE_ALONE,
+                           &fit->noise);
+    if (!fit->noise.is_measured || fit->noise.variance < DIGITAL_SILENCE) {
         fit->is_noise_from_tail = true;
         size_t tail = (strike->frame_count - strike->trigger) / 4;
         size_t from = strike->frame_count - tail;
         spectrum_measure_noise(workspace->spectrum, workspace->y + from, tail, GRAIN_24_BIT,
-                               &fit->noise);
+                               NOISE_BETWEEN_LINES, &fit->noise);
     }
     /* Longer transforms gain little for modes that anyone could still read, and cost most of the
      * search's time. */
@@ -254,6 +259,11 @@ static double mean_square(const struct fit *fit, size_t from, size_t count, bool
         sum += r * r;
     }
     return sum / (double)count;
+}
+
+double window_left(const struct fit *fit, size_t from, size_t count)
+{
+    return mean_square(fit, from, count, true);
 }
 
 /* Does the ring begin near `at` out of silence, with no blow between? Then that is the onset. */
