@@ -20,6 +20,11 @@ void text_append(struct text *text, const char *string);
 void text_append_bytes(struct text *text, const char *bytes, size_t count);
 void text_appendf(struct text *text, const char *format, ...) __attribute__((format(printf, 2, 3)));
 
+/* libjansson exports functions of these three names; ours must not stand in for them. */
+#define json_string  wane_json_string
+#define json_integer wane_json_integer
+#define json_null    wane_json_null
+
 /* JSON. Objects and arrays nest up to 32 deep; commas are put by the writer. `key` NULL inside
  * arrays. = {.text = &text} is a valid start. */
 struct json_writer {

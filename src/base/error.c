@@ -19,7 +19,7 @@ static void trim_broken_character(char *text)
         text[length - 1 - tail] = '\0';
 }
 
-bool error_set(struct error *err, enum error_kind kind, const char *format, ...)
+bool(error_set)(struct error *err, enum error_kind kind, const char *format, ...)
 {
     if (err == NULL)
         return false;

@@ -60,29 +60,29 @@ void reading_init(struct reading *reading)
 {
     memset(reading, 0, sizeof *reading);
     reading->verdict = VERDICT_REJECTED;
-    reading->onset_frame = NAN;
-    reading->window_begin_frame = NAN;
-    reading->window_end_frame = NAN;
-    reading->peak_dbfs = NAN;
-    reading->noise_dbfs = NAN;
-    reading->snr_db = NAN;
-    reading->fit_ms = NAN;
+    reading->onset_frame = (double)NAN;
+    reading->window_begin_frame = (double)NAN;
+    reading->window_end_frame = (double)NAN;
+    reading->peak_dbfs = (double)NAN;
+    reading->noise_dbfs = (double)NAN;
+    reading->snr_db = (double)NAN;
+    reading->fit_ms = (double)NAN;
     reading->why = (struct why){
-        .lost_frames = NAN,
-        .lost_at_s = NAN,
-        .clipped_for_s = NAN,
-        .after_s = NAN,
-        .cut_s = NAN,
-        .noise_dbfs = NAN,
-        .over_noise_db = NAN,
-        .cycles = NAN,
-        .span_s = NAN,
-        .unexplained = NAN,
-        .early_per_s = NAN,
-        .late_per_s = NAN,
-        .early_hz = NAN,
-        .late_hz = NAN,
-        .gain_db = NAN,
-        .near_hz = NAN,
+        .lost_frames = (double)NAN,
+        .lost_at_s = (double)NAN,
+        .clipped_for_s = (double)NAN,
+        .after_s = (double)NAN,
+        .cut_s = (double)NAN,
+        .noise_dbfs = (double)NAN,
+        .over_noise_db = (double)NAN,
+        .cycles = (double)NAN,
+        .span_s = (double)NAN,
+        .unexplained = (double)NAN,
+        .early_per_s = (double)NAN,
+        .late_per_s = (double)NAN,
+        .early_hz = (double)NAN,
+        .late_hz = (double)NAN,
+        .gain_db = (double)NAN,
+        .near_hz = (double)NAN,
     };
 }
