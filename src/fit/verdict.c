@@ -178,14 +178,13 @@ static void judge_curvature(struct fit *fit, struct reading *reading)
 /* Gain that moves takes all modes and the noise with it. */
 static void judge_steering(struct fit *fit, struct reading *reading)
 {
-    double sum = 0, least = INFINITY, most = -INFINITY;
+    double least = INFINITY, most = -INFINITY;
     unsigned count = 0;
     for (unsigned k = 0; k < fit->segment->pole_count; k++) {
         const struct curvature *curve = &fit->curvature[k];
         if (!curve->is_known || curve->u_a * 5 > fabs(creal(curve->early - curve->late)))
             continue;
         double change = creal(curve->early - curve->late);
-        sum += change;
         least = fmin(least, change);
         most = fmax(most, change);
         count++;
