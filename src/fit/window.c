@@ -49,6 +49,9 @@ static void merge_tones(struct fit *fit, size_t count)
         }
 }
 
+/* A line that falls by less than this over the quiet span, in nepers, is steady. */
+#define TONE_DECAY 0.25
+
 /* Steady tones of the quiet span: found, refined together, taken out of `quiet`. */
 static void find_tones(struct fit *fit, float *quiet, size_t count)
 {
@@ -67,7 +70,7 @@ static void find_tones(struct fit *fit, float *quiet, size_t count)
         if (found == 0)
             break;
         for (unsigned i = 0; i < found; i++)
-            segment_add_pole(segment, POLE_TONE, J * w[i]);
+            segment_add_pole(segment, POLE_RING, -0.05 / (double)count + J * w[i]);
         if (!refine_poles(segment, 12))
             break;
         unsigned before = segment->pole_count;
@@ -77,13 +80,17 @@ static void find_tones(struct fit *fit, float *quiet, size_t count)
     }
     fit->tone_count = 0;
     for (unsigned k = 0; k < segment->pole_count; k++) {
-        fit->tones_w[fit->tone_count++] = cimag(segment->poles[k].p);
+        /* What decays is an earlier ring that nobody carried over. */
+        if (-creal(segment->poles[k].p) * (double)count < TONE_DECAY)
+            fit->tones_w[fit->tone_count++] = cimag(segment->poles[k].p);
         fit->tone_variance += creal(segment->poles[k].c * conj(segment->poles[k].c)) / 2;
         moments_subtract(quiet, count, segment->poles[k].p, segment->poles[k].c, segment->table);
     }
 }
 
-/* The first sample that stands clear of the noise, from 5 ms before the trigger on. */
+/* The first sample that stands clear of the noise, from 5 ms before the trigger on. What rang or
+ * hummed before goes on as predicted; what is left of it, 5 to 10 ms before the trigger, counts as
+ * noise. */
 static size_t find_blow(const struct fit *fit)
 {
     const struct strike *strike = fit->strike;
@@ -91,8 +98,18 @@ static size_t find_blow(const struct fit *fit)
     size_t from = strike->trigger > reach ? strike->trigger - reach : 0;
     size_t to = strike->trigger + reach < strike->frame_count ? strike->trigger + reach
                                                               : strike->frame_count;
-    double limit = 25 * (fit->noise.variance + fit->tone_variance);
-    const float *y = fit->workspace->y;
+    float *y = fit->workspace->residual;
+    memcpy(y, fit->workspace->y, to * sizeof *y);
+    subtract_carried(fit, y, to);
+    for (unsigned k = 0; k < fit->segment->pole_count; k++) {
+        const struct pole *pole = &fit->segment->poles[k];
+        moments_subtract(y, pole_length(pole, to), pole->p, pole->c, fit->segment->table);
+    }
+    double before = 0;
+    size_t start = from > reach ? from - reach : 0;
+    for (size_t n = start; n < from; n++)
+        before += (double)y[n] * (double)y[n] / (double)(from - start);
+    double limit = 25 * fmax(fit->noise.variance, before);
     for (size_t n = from; n < to; n++) {
         if ((double)y[n] * (double)y[n] > limit)
             return n < strike->trigger + reach / 4 ? n : strike->trigger;
