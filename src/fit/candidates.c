@@ -274,6 +274,24 @@ static bool drop_blow_poles(struct fit *fit)
     return has_dropped;
 }
 
+/* A pole far below the lowest frequency is the input's coupling, a real pole: kept as a ring, its
+ * amplitude and phase could not be told apart. */
+static bool straighten_slow_poles(struct fit *fit)
+{
+    struct segment *segment = fit->segment;
+    bool has_changed = false;
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        struct pole *pole = &segment->poles[k];
+        if (pole->kind != POLE_RING || cimag(pole->p) > 0.25 * fit->w_low)
+            continue;
+        pole->kind = POLE_REAL;
+        pole->p = creal(pole->p);
+        segment->has_moments[k] = false;
+        has_changed = true;
+    }
+    return has_changed;
+}
+
 static void search_all(struct fit *fit)
 {
     struct segment *segment = fit->segment;
@@ -284,6 +302,8 @@ static void search_all(struct fit *fit)
             segment_remove_pole(segment, segment->pole_count - 1);
             refine_poles(segment, 30);
         }
+        if (straighten_slow_poles(fit))
+            refine_poles(segment, 30);
         drop_weak_poles(fit);
     }
 }

@@ -52,6 +52,24 @@ static void merge_tones(struct fit *fit, size_t count)
 /* A line that falls by less than this over the quiet span, in nepers, is steady. */
 #define TONE_DECAY 0.25
 
+/* Takes the steady lines out of `quiet` and lists them as tones, or takes the others out: what
+ * decays is an earlier ring that nobody carried over. */
+static void subtract_lines(struct fit *fit, float *quiet, size_t count, bool is_steady_wanted)
+{
+    struct segment *segment = fit->segment;
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        const struct pole *pole = &segment->poles[k];
+        bool is_steady = -creal(pole->p) * (double)count < TONE_DECAY;
+        if (is_steady != is_steady_wanted)
+            continue;
+        if (is_steady) {
+            fit->tones_w[fit->tone_count++] = cimag(pole->p);
+            fit->tone_variance += creal(pole->c * conj(pole->c)) / 2;
+        }
+        moments_subtract(quiet, count, pole->p, pole->c, segment->table);
+    }
+}
+
 /* Steady tones of the quiet span: found, refined together, taken out of `quiet`. */
 static void find_tones(struct fit *fit, float *quiet, size_t count)
 {
@@ -79,13 +97,9 @@ static void find_tones(struct fit *fit, float *quiet, size_t count)
             refine_poles(segment, 12);
     }
     fit->tone_count = 0;
-    for (unsigned k = 0; k < segment->pole_count; k++) {
-        /* What decays is an earlier ring that nobody carried over. */
-        if (-creal(segment->poles[k].p) * (double)count < TONE_DECAY)
-            fit->tones_w[fit->tone_count++] = cimag(segment->poles[k].p);
-        fit->tone_variance += creal(segment->poles[k].c * conj(segment->poles[k].c)) / 2;
-        moments_subtract(quiet, count, segment->poles[k].p, segment->poles[k].c, segment->table);
-    }
+    subtract_lines(fit, quiet, count, true);
+    spectrum_remember(workspace->spectrum, quiet, count);
+    subtract_lines(fit, quiet, count, false);
 }
 
 /* The first sample that stands clear of the noise, from 5 ms before the trigger on. What rang or
@@ -154,13 +168,17 @@ void window_prepare(struct fit *fit)
         fit->lost_frames = (double)strike->lost[i].frames;
     }
     take_offset_out(fit);
-    spectrum_remember(workspace->spectrum, workspace->y, fit->quiet_end);
     float *quiet = workspace->quiet;
     memcpy(quiet, workspace->y, fit->quiet_end * sizeof *quiet);
     subtract_carried(fit, quiet, fit->quiet_end);
     find_tones(fit, quiet, fit->quiet_end);
     spectrum_measure_noise(workspace->spectrum, quiet, fit->quiet_end, GRAIN_24_BIT, NOISE_ALONE,
                            &fit->noise);
+    /* Slow wander lies below the lowest bins: in time it counts. */
+    double power = 0;
+    for (size_t n = 0; n < fit->quiet_end; n++)
+        power += (double)quiet[n] * (double)quiet[n] / (double)fit->quiet_end;
+    fit->noise.variance = fmax(fit->noise.variance, power);
     if (!fit->noise.is_measured || fit->noise.variance < DIGITAL_SILENCE) {
         fit->is_noise_from_tail = true;
         size_t tail = (strike->frame_count - strike->trigger) / 4;
