@@ -25,7 +25,7 @@ function missed(reason)
 /^[0-9]+\/[0-9]+ Testing: / {
     settle()
     test = $3
-    ok = bad = left = 0
+    ok = bad = left = named = gap = 0
     running = why = verdict = ""
     is_output = 0
     next
@@ -39,16 +39,19 @@ function missed(reason)
 /^\[       OK \] / && $4 == running { ok++; running = ""; next }
 /^\[  FAILED  \] / && $4 == running { bad++; print "failed\t" test " " running; running = ""; next }
 /^\[  SKIPPED \] / && $4 == running { missed(running (why == "" ? "" : ": " why)); running = ""; next }
-/^# (pass|fail|skipped) [0-9]+$/ {
-    if ($2 == "pass")
-        ok += $3
-    else if ($2 == "fail") {
-        for (i = 0; i < $3; i++)
-            print "failed\t" test " (browser)"
-        bad += $3
-    } else
-        for (i = 0; i < $3; i++)
-            missed(why)
+# node's TAP: names as they come, counts at its end.
+/^not ok [0-9]+ - / && !/# SKIP/ { name = $0; sub(/^not ok [0-9]+ - /, "", name); names[++named] = name; next }
+/^ok [0-9]+ - .*# SKIP/ { name = $0; sub(/^ok [0-9]+ - /, "", name); sub(/# SKIP */, "", name); gaps[++gap] = name; next }
+/^# pass [0-9]+$/ { ok += $3; next }
+/^# fail [0-9]+$/ {
+    for (i = 1; i <= $3; i++)
+        print "failed\t" test " " (i <= named ? names[i] : "")
+    bad += $3
+    next
+}
+/^# skipped [0-9]+$/ {
+    for (i = 1; i <= $3; i++)
+        missed(i <= gap ? gaps[i] : why)
     next
 }
 /^ *(# )?[Ss]kip(ped)?[: ]/ || /# SKIP/ { why = $0; sub(/^.*[Ss](kip|KIP)(ped)?:? */, "", why) }

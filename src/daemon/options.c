@@ -122,7 +122,7 @@ static bool set_listen(const char *value, struct options *options, struct error 
     memcpy(options->address, value, length);
     options->address[length] = '\0';
     if (strcmp(options->address, "localhost") == 0)
-        strcpy(options->address, "127.0.0.1");
+        snprintf(options->address, sizeof options->address, "127.0.0.1");
     options->port = (unsigned)port;
     return true;
 }

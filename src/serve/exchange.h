@@ -111,6 +111,20 @@ void answer_error(struct exchange *exchange, const struct error *err);
 /* Hands exchange->job to the daemon; the connection sleeps until it is answered. */
 void exchange_submit(struct exchange *exchange, enum serve_call call);
 
+/* --- guard.c: each fills the answer with a problem and returns false when it refuses --- */
+
+/* A header's value, or NULL. Borrowed from MHD. */
+const char *exchange_header(struct exchange *exchange, const char *name);
+/* Exactly one Host, ours; one length of the body. */
+bool guard_host(struct exchange *exchange);
+/* Not from another site's page. */
+bool guard_origin(struct exchange *exchange, unsigned method);
+/* The two below need exchange->route. */
+bool guard_content_type(struct exchange *exchange);
+bool guard_length(struct exchange *exchange);
+uint64_t guard_body_limit(const struct exchange *exchange);
+void guard_answer_too_large(struct exchange *exchange);
+
 /* --- problem.c --- */
 void problem_write(struct text *out, unsigned status, const char *detail);
 const char *problem_title(unsigned status);

@@ -53,7 +53,7 @@ static void set_noise(struct scene *scene, double noise_sd)
 
 void bench_close(struct scene *scene, double spans, size_t frames_max, gsl_rng *rng)
 {
-    double rate_hz = scene->rate_hz, slowest = INFINITY, end_s = 0.0;
+    double rate_hz = scene->rate_hz, slowest = (double)INFINITY, end_s = 0.0;
     for (unsigned k = 0; k < scene->mode_count; k++)
         slowest = fmin(slowest, scene->modes[k].decay_per_s);
     for (unsigned i = 0; i < scene->pulse_count; i++)
@@ -326,7 +326,7 @@ static void draw_restrike(struct scene *scene, gsl_rng *rng)
     unsigned count = 1 + (unsigned)gsl_rng_uniform_int(rng, 3);
     add_chord(scene, count, 200.0, 8000.0, 20.0, 5.0, rng);
     count = scene->mode_count;
-    double slowest = INFINITY;
+    double slowest = (double)INFINITY;
     for (unsigned k = 0; k < count; k++) {
         slowest = fmin(slowest, scene->modes[k].decay_per_s);
         scene->modes[k].amplitude *= 0.5;

@@ -272,7 +272,7 @@ static int by_value(const void *a, const void *b)
 double score_median(double *values, size_t count)
 {
     if (count == 0)
-        return NAN;
+        return (double)NAN;
     qsort(values, count, sizeof *values, by_value);
     return count % 2 ? values[count / 2] : 0.5 * (values[count / 2 - 1] + values[count / 2]);
 }
@@ -294,7 +294,7 @@ void score_summarise(const struct score_errors *errors, struct score_summary *ou
     double n = (double)errors->count, m = (double)kept;
     double rms = sqrt(square / m);
     double *u = malloc((errors->count + 1) * sizeof *u);
-    double u_median = NAN;
+    double u_median = (double)NAN;
     if (u) {
         memcpy(u, errors->u, errors->count * sizeof *u);
         u_median = score_median(u, errors->count);

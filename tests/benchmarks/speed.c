@@ -59,7 +59,7 @@ static double fft_ms(const struct strike *strike)
     fftw_plan plan = fftw_plan_dft_r2c_1d((int)n, in, out, FFTW_ESTIMATE);
     for (size_t i = 0; i < n; i++)
         in[i] = (double)strike->samples[strike->trigger + i];
-    double best = INFINITY;
+    double best = (double)INFINITY;
     for (unsigned repeat = 0; repeat < 3; repeat++) {
         double begin_s = benchmark_thread_s();
         fftw_execute(plan);
@@ -149,7 +149,7 @@ static double decode_cpu_s(const char *path)
     double sum = 0.0, begin_s = benchmark_process_s();
     SNDFILE *file = sf_open(path, SFM_READ, &info);
     if (!file)
-        return NAN;
+        return (double)NAN;
     sf_count_t got;
     while ((got = sf_readf_float(file, block, BLOCK)) > 0)
         sum += (double)block[0];

@@ -7,7 +7,7 @@ import path from 'node:path';
 import test from 'node:test';
 import { get, makeFolder, run, start, until, watch, within } from '../daemon/support.mjs';
 
-const script = new URL('virtual-card', import.meta.url).pathname;
+const script = decodeURIComponent(new URL('virtual-card', import.meta.url).pathname);
 const check = spawnSync(decodeURIComponent(script), ['check'], { encoding: 'utf8' });
 const skip = check.status === 0 ? false : `no virtual sound card: ${check.stdout.trim()}`;
 if (skip) console.log(`skipped: ${skip}`);

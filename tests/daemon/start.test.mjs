@@ -75,7 +75,7 @@ test('the commented settings file in configs/ is a right one, as it is and uncom
   assert.equal(state.trigger.f_high_hz, 20000);
   assert.equal(state.log.path, log);
   await daemon.stop();
-  const plain = await start(['--config', new URL('../../configs/waned.ini', import.meta.url).pathname]);
+  const plain = await start(['--config', decodeURIComponent(new URL('../../configs/waned.ini', import.meta.url).pathname)]);
   assert.equal((await get(plain, '/api/v1/state')).input.state, 'none');
   await plain.stop();
 });

@@ -211,7 +211,9 @@ test('forming sharpens and settles without any digit changing its place', async 
     await page.evaluate(() => {
       window.seen = [];
       window.shift = 0;
-      new PerformanceObserver((list) => { for (const e of list.getEntries()) window.shift += e.value; }).observe({ type: 'layout-shift', buffered: false });
+      /* A new row moves the log's older rows down: that is what it is for. */
+      const isLog = (source) => Boolean(source.node && document.querySelector('#log').contains(source.node));
+      new PerformanceObserver((list) => { for (const e of list.getEntries()) if (!e.sources.every(isLog)) window.shift += e.value; }).observe({ type: 'layout-shift', buffered: false });
       const watch = () => {
         const q = document.querySelector('.figure-q');
         const cells = [...q.querySelectorAll('.cell')].map((c) => [c.className, c.textContent, Math.round(c.getBoundingClientRect().left * 10) / 10, Math.round(c.getBoundingClientRect().width * 10) / 10]);
@@ -239,7 +241,7 @@ test('forming sharpens and settles without any digit changing its place', async 
       assert.deepEqual([left, width], final.cells[i].slice(2), `cell ${i} moved`);
     });
     assert.ok(seen.every((s) => s.top === final.top && s.verdictTop === final.verdictTop), 'the reading or the verdict line moved');
-    console.log(`layout shift from forming to final: ${shift.toFixed(5)} (limit 0.005); frames seen: ${seen.length}`);
+    console.log(`layout shift from forming to final, without the log's rows: ${shift.toFixed(5)} (limit 0.005); frames seen: ${seen.length}`);
     assert.ok(shift <= 0.005, `layout shift ${shift}`);
     assert.deepEqual(errors, []);
     await context.close();
@@ -260,7 +262,7 @@ test('names with markup, of 199 characters (all that the log takes) and from rig
       const { page, context, errors } = await openPage(daemon.url);
       await until(async () => (await api(daemon, '/strikes')).strikes.length >= 1, 'a strike');
       await page.waitForFunction((n) => document.querySelector('#log .part-name')?.textContent.includes(n), name);
-      assert.ok((await page.textContent('#reading .title')).includes(name));
+      await page.waitForFunction((n) => document.querySelector('#reading .title').textContent.includes(n), name);
       assert.equal(await page.evaluate(() => document.querySelectorAll('body script').length), 0);
       const wide = await page.evaluate(() => document.documentElement.scrollWidth - innerWidth);
       assert.ok(wide <= 0, `the page is ${wide} px too wide`);

@@ -46,10 +46,15 @@ export async function startDaemon(words, log, port = 0) {
     });
     child.on('exit', (code) => reject(new Error(`waned ended with ${code}: ${errors}`)));
   });
-  const gone = new Promise((resolve) => child.on('exit', resolve));
+  let isAsked = false;
+  const gone = new Promise((resolve) => child.on('exit', (code, signal) => {
+    if (!isAsked) console.log(`waned ended by itself: code ${code}, signal ${signal}; ${errors}`);
+    resolve(code);
+  }));
   return {
     url, port: Number(new URL(url).port),
     async stop(signal = 'SIGTERM') {
+      isAsked = true;
       child.kill(signal);
       await gone;
     },

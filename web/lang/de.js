@@ -89,7 +89,7 @@ export default {
 
   row: 'Schläge', rowHead: 'Pegel, dBFS; Länge ist T60; der Strich ist der Median', rowSeries: 'Pegel, dBFS; Länge ist T60; der Strich ist der Median der Serie',
   rowLabel: 'Schläge, älteste zuerst', spreads: 'außerhalb der Streuung der anderen', newerWaiting: '{count} neue', fold: 'falten', unfold: 'auffalten', noStrikes: 'Noch kein Schlag.', more: 'weitere',
-  option: 'Schlag {id}, {verdict}{odd}{aside}. {figures}', speakQ: 'Q {value} plus oder minus {u}.', status: 'Schlag {id}, {verdict}. {q}{more}', statusMore: ' Noch {count}.', noFigures: 'keine Werte',
+  option: 'Schlag {id}{words}, {verdict}. {figures}', speakQ: 'Q {value} plus oder minus {u}.', status: 'Schlag {id}, {verdict}. {q}{more}', statusMore: ' Noch {count}.', noFigures: 'keine Werte',
 
   plots: 'Kurven', decayHead: 'Abklingen', decaySub: 'jede Mode in ihrem Band; dick die Anpassung', decayAgainst: 'gegen den gemerkten Schlag {id}, Mode {label}',
   spectrumHead: 'Spektrum', around: 'um {label}', aroundLead: 'nah', fitWord: 'Anpassung', wideSpectrum: 'weit', traceHead: 'Verlauf', traceSub: 'getönt ist die Zeit davor; die Klammer ist, was angepasst wurde',

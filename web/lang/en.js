@@ -102,7 +102,7 @@ export default {
   row: 'Strikes', rowHead: 'level, dBFS; length is T60; the tick is the median', rowSeries: 'level, dBFS; length is T60; the tick is the series’ median',
   rowLabel: 'Strikes, oldest first', spreads: 'outside the others’ spread', newerWaiting: '{count} new',
   fold: 'fold', unfold: 'unfold', noStrikes: 'No strike yet.', more: 'more',
-  option: 'Strike {id}, {verdict}{odd}{aside}. {figures}', speakQ: 'Q {value} plus or minus {u}.', speakT60: ' T60 {value} {unit}.',
+  option: 'Strike {id}{words}, {verdict}. {figures}', speakQ: 'Q {value} plus or minus {u}.', speakT60: ' T60 {value} {unit}.',
   status: 'Strike {id}, {verdict}. {q}{more}', statusMore: ' {count} more.', noFigures: 'no figures',
 
   // Plots

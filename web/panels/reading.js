@@ -71,7 +71,7 @@ export function mount(element, store) {
     setText(part, strike?.part || store.bench?.series?.part || strike?.input_part || t('reading'));
     const id = strike?.id ? t('strikeNo', { id: dress(String(strike.id)) }) : '';
     setText(sub, [
-      label && strike.modes?.length > 1 ? t('modeOf', { label }) : '', strike?.specimen, id,
+      label && strike.modes?.length > 1 ? t('modeOf', { label }) : '', strike?.specimen ?? (isForming ? store.bench?.series?.specimen : ''), id,
       strike?.time ? clockText(strike.time) : '', strike && isAside(strike) ? t('aside') : '',
       isOld ? t('ago', { span: ageText((Date.now() - Date.parse(strike.time)) / 1000) }) : '',
     ].filter(Boolean).join(' · '));

@@ -254,7 +254,7 @@ function slot(store, strike, at, L, isSelected, medianT60) {
     const end = x + (wedgeLength(medianT60, L.pitch, store.scale).length ?? 0);
     g.append(svg('line', { class: 'tick', x1: end, x2: end, y1: base, y2: base + 6 * u }));
   }
-  drawFoot(g, strike, { x, base, L, isSelected, isPinned });
+  drawFoot(g, strike, { x, base, L, isPinned });
   if (isSelected) g.append(svg('rect', { class: 'select-bar', x: 0, y: base + L.foot - 3, width: L.pitch, height: 3 }));
   if (isPinned) g.append(svg('rect', { class: 'pin-bar', x: 0, y: 0, width: L.pitch, height: 3 }));
   return g;
@@ -286,7 +286,7 @@ function drawWedge(g, store, strike, { x, base, L }) {
 }
 
 /** @param {Element} g @param {any} strike @param {any} place */
-function drawFoot(g, strike, { x, base, L, isSelected, isPinned }) {
+function drawFoot(g, strike, { x, base, L, isPinned }) {
   const u = L.unit;
   const shape = isAside(strike) ? 'aside' : strike.verdict;
   if (!L.isUnfolded || strike.verdict !== 'good') {
@@ -295,9 +295,15 @@ function drawFoot(g, strike, { x, base, L, isSelected, isPinned }) {
     g.append(svg('use', { class: `foot ${strike.verdict}`, href: `#mark-${shape}`, x: x - 1, y: y - s / 2, width: s, height: s }));
   }
   if (!L.hasNumber) return;
-  const word = isPinned ? t('pinned') : isAside(strike) ? t('aside') : strike.odd ? t('odd') : '';
-  if (word) g.append(svg('text', { class: isPinned ? 'pinned-word' : null, x: x + 12 * u, y: base + 18 * u, text: word }));
-  g.append(svg('text', { class: `number${isSelected ? ' is' : ''}`, x: x - 1, y: base + 33 * u, text: dress(String(strike.id)) }));
+  g.append(svg('text', { class: 'number', x: x - 1, y: base + 33 * u, text: dress(String(strike.id)) }));
+  const [word] = wordsOf(strike, isPinned);
+  if (word) g.append(' ', svg('text', { class: isPinned ? 'pinned-word' : null, x: x + 12 * u, y: base + 18 * u, text: word }));
+}
+
+/** Words beside the verdict; the first is drawn. @param {any} strike @param {boolean} isPinned
+ * @returns {string[]} */
+function wordsOf(strike, isPinned) {
+  return [isPinned ? t('pinned') : '', isAside(strike) ? t('aside') : '', strike.odd ? t('odd') : ''].filter(Boolean);
 }
 
 /** A strike that is still wanted. @param {number} number @param {{x: number, y: number}} at
@@ -316,7 +322,7 @@ function futureSlot(number, at, L, store, ids) {
   return g;
 }
 
-/** "Strike 7, good, odd. Q 1279.1 plus or minus 6.0. T60 3.190 seconds." */
+/** "Strike 7 odd, good. Q 1279.1 plus or minus 6.0. T60 3.190 seconds." */
 /** @param {import('../store.js').Store} store @param {any} strike */
 export function optionName(store, strike) {
   const mode = strike.verdict === 'rejected' ? null : store.leadMode(strike);
@@ -324,7 +330,8 @@ export function optionName(store, strike) {
   const t60 = mode && pair(mode.t60_s, mode.t60_u_s);
   const d = decimal();
   const figures = q ? t('speakQ', { value: dress(q.value, d), u: q.u ? dress(q.u, d) : t('notKnown') }) + (t60 ? t('speakT60', { value: dress(t60.value, d), unit: t('s') }) : '') : reasonWords(strike) || t('noFigures');
-  return t('option', { id: strike.id, verdict: t(strike.verdict), odd: strike.odd ? ', ' + t('odd') : '', aside: (isAside(strike) ? ', ' + t('aside') : '') + (strike.id === store.pinned ? ', ' + t('pinned') : ''), figures });
+  const words = wordsOf(strike, strike.id === store.pinned); // after the number, as they are drawn
+  return t('option', { id: dress(String(strike.id)), words: words.length ? ` ${words.join(', ')}` : '', verdict: t(strike.verdict), figures });
 }
 
 /** The one line above the row. @param {import('../store.js').Store} store @param {any} strike */
