@@ -295,7 +295,7 @@ static bool straighten_slow_poles(struct fit *fit)
 static void search_all(struct fit *fit)
 {
     struct segment *segment = fit->segment;
-    for (int round = 0; round < ROUNDS_MAX; round++) {
+    for (int round = 0; round < ROUNDS_MAX && segment->work < segment->work_max / 2; round++) {
         if (search_round(fit) == 0)
             break;
         if (!refine_poles(segment, 30)) {

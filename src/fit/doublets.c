@@ -80,6 +80,45 @@ static bool try_split(struct fit *fit, unsigned k)
     return true;
 }
 
+/* Before a mode is split: is it the input's AC coupling that it lacks? A real pole is simpler than
+ * a second mode. */
+static bool try_coupling(struct fit *fit, unsigned wanting)
+{
+    static const double corners_hz[] = {1, 5, 20};
+    struct segment *segment = fit->segment;
+    struct pole before[POLES_MAX], best[POLES_MAX];
+    unsigned count = segment->pole_count;
+    double explained = segment->explained, best_explained = explained;
+    for (unsigned k = 0; k < count; k++) {
+        if (segment->poles[k].kind == POLE_REAL)
+            return false;
+    }
+    memcpy(before, segment->poles, sizeof before);
+    for (size_t i = 0; i < sizeof corners_hz / sizeof corners_hz[0]; i++) {
+        restore(segment, before, count);
+        double a = 2 * WANE_PI * corners_hz[i] / fit->strike->rate_hz;
+        if (segment_add_pole(segment, POLE_REAL, -a) && refine_poles(segment, 25) &&
+            segment->explained > best_explained) {
+            best_explained = segment->explained;
+            memcpy(best, segment->poles, sizeof best);
+        }
+    }
+    double density = noise_density(&fit->noise, fit->w_low);
+    double gain = (best_explained - explained) / (2 * density);
+    bool is_needed = gain > log((double)segment->frame_count) + 8;
+    if (is_needed) {
+        restore(segment, best, count + 1);
+        refine_amplitudes(segment);
+        candidates_residual(fit);
+        is_needed = doublet_score(fit, wanting) < SCORE_LEAST;
+    }
+    if (!is_needed) {
+        restore(segment, before, count);
+        refine_amplitudes(segment);
+    }
+    return is_needed;
+}
+
 /* Is one of the pair only what is left of the other's misfit, or of a decay that is no exponential?
  * Two rates at one frequency are the mark of the latter. */
 static bool is_real_pair(const struct pole *a, const struct pole *b)
@@ -166,10 +205,12 @@ void doublets_resolve(struct fit *fit)
     bool is_done[POLES_MAX] = {false};
     fit->unresolved_w = 0;
     memset(fit->is_curved, 0, sizeof fit->is_curved);
-    for (int split = 0; split < SPLITS_MAX; split++) {
+    for (int split = 0; split < SPLITS_MAX && segment->work < segment->work_max * 3 / 4; split++) {
         int wanting = find_wanting(fit, is_done, SCORE_LEAST);
         if (wanting < 0)
             return;
+        if (split == 0 && try_coupling(fit, (unsigned)wanting))
+            continue;
         struct pole before[POLES_MAX];
         unsigned count = segment->pole_count, one = (unsigned)wanting;
         memcpy(before, segment->poles, sizeof before);

@@ -9,6 +9,9 @@
 
 #define MISFIT_MOST 0.03 /* of the ring's energy: more is no misfit but another thing */
 #define WALKS_MAX   12
+/* Bounds the time whatever the sound, by counting, not by a clock: the same strike gives the same
+ * bits. */
+#define WORK_MAX 40000
 
 static bool allocate(struct fit_workspace *workspace, size_t frames_max)
 {
@@ -181,31 +184,39 @@ static void list_tones(const struct fit *fit, struct reading *reading)
     }
 }
 
+/* The ring pole with most energy. */
+static unsigned find_lead(const struct fit *fit)
+{
+    const struct segment *segment = fit->segment;
+    double strongest = -1;
+    unsigned lead = 0;
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        const struct pole *pole = &segment->poles[k];
+        double energy = creal(pole->c * conj(pole->c)) / fmax(-creal(pole->p), 1e-9);
+        if (pole->kind == POLE_RING && energy > strongest) {
+            strongest = energy;
+            lead = k;
+        }
+    }
+    return lead;
+}
+
 /* What the verdict needs to know beyond the modes. */
 static void examine(struct fit *fit)
 {
     struct segment *segment = fit->segment;
-    double strongest = -1;
     bool is_any_curved = false;
-    for (unsigned k = 0; k < segment->pole_count; k++) {
-        const struct pole *pole = &segment->poles[k];
-        double a = -creal(pole->p);
-        double energy = creal(pole->c * conj(pole->c)) / fmax(a, 1e-9);
-        if (pole->kind != POLE_RING)
-            continue;
-        is_any_curved = is_any_curved || fit->is_curved[k];
-        if (energy > strongest) {
-            strongest = energy;
-            fit->lead_pole = k;
-        }
-    }
+    for (unsigned k = 0; k < segment->pole_count; k++)
+        is_any_curved = is_any_curved || (segment->poles[k].kind == POLE_RING && fit->is_curved[k]);
+    fit->lead_pole = find_lead(fit);
     clip_count(fit);
     breaks_find(fit);
     if (fit->break_kind == BREAK_LOST && fit->break_at > fit->begin + 64 &&
         -creal(segment->poles[fit->lead_pole].p) * (double)(fit->break_at - fit->begin) >= 3) {
         fit->end = fit->break_at;
-        candidates_fit(fit);
-        candidates_finish(fit);
+        if (!candidates_fit(fit) || !candidates_finish(fit))
+            return;
+        fit->lead_pole = find_lead(fit);
     }
     if (fit->break_kind == BREAK_NONE && (is_any_curved || fit->misfit > 1))
         curvature_measure(fit);
@@ -275,8 +286,12 @@ bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
     fit.w_low = 2 * WANE_PI * fit.settings.f_low_hz / strike->rate_hz;
     fit.w_high = 2 * WANE_PI * fit.settings.f_high_hz / strike->rate_hz;
     fit.misfit = 1;
+    fit.segment->work = 0;
+    fit.segment->work_max = SIZE_MAX;
     fit.segment->negligible = 0;
     window_prepare(&fit);
+    fit.segment->work = 0;
+    fit.segment->work_max = WORK_MAX;
     fit.segment->negligible = 1e-5 * fit.noise.variance;
     fit.begin = fit.first_begin = window_first_begin(&fit);
     bool has_modes = candidates_fit(&fit);

@@ -83,7 +83,7 @@ bool lowq_search(struct fit *fit, struct candidate *out, bool *out_is_real)
         size_t length = (size_t)(6 / (a * (double)thin)) + 4;
         length = length < count ? length : count;
         double energy = explained_by_real(y, length, a * (double)thin) * (double)thin;
-        energy /= noise_density(&fit->noise, 0);
+        energy /= noise_density(&fit->noise, fit->w_low);
         if (energy > 0.9 * best) {
             best = fmax(best, energy / 0.9);
             *out = (struct candidate){-a, 0, energy / 2};

@@ -49,6 +49,7 @@ static void gather(struct segment *segment, unsigned k)
                                                     k * segment->pool_blocks * MOMENT_ORDERS);
     moments_gather(segment->y, length, pole->p, block, segment->table, moments);
     segment->has_moments[k] = true;
+    segment->work += length / 600;
 }
 
 static void gather_where_needed(struct segment *segment, double strain_max)
@@ -197,6 +198,7 @@ static bool evaluate(struct segment *segment, double strain_max, double complex 
 {
     gather_where_needed(segment, strain_max);
     fill_pair_sums(segment);
+    segment->work += (size_t)segment->pole_count * segment->pole_count;
     evaluate_data(segment, out_sums);
     return solve_amplitudes(segment, (const double complex(*)[2])out_sums);
 }
@@ -225,7 +227,7 @@ bool refine_poles(struct segment *segment, unsigned steps_max)
     double strain_max = STRAIN_COARSE;
     if (!evaluate(segment, strain_max, data_sums))
         return false;
-    for (unsigned step = 0; step < steps_max; step++) {
+    for (unsigned step = 0; step < steps_max && segment->work < segment->work_max; step++) {
         memcpy(before, segment->poles, sizeof before);
         double explained_before = segment->explained;
         bool is_better = false;

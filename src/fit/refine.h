@@ -21,6 +21,7 @@ struct segment {
     size_t frame_count;
     struct pole poles[POLES_MAX];
     unsigned pole_count;
+    size_t work, work_max; /* cost so far, in units of about half a microsecond, and its bound */
     double negligible; /* gain of energy that means nothing beside the noise: where refining ends */
     double explained;  /* energy of the model's projection; filled by refine_* */
 

@@ -53,7 +53,8 @@ struct fit {
     double clipped_share;                           /* of the window's first third */
     bool is_noise_from_tail; /* nothing before the strike to measure it from */
     size_t lost_at;          /* where the driver says that frames are missing; 0: nowhere */
-    double quietest;    /* power of the ring's quietest 10 ms over the noise before; 0: unknown */
+    double
+        quietest; /* quietest 10 ms of the ring over the quietest before it, powers; 0: unknown */
     double noise_after; /* variance in the window's last part over the noise before; 0: unknown */
     double misfit;      /* by how much what the modes leave exceeds the noise, 1: not at all */
     double unexplained; /* share of the energy */

@@ -66,7 +66,9 @@ static bool is_of_this_strike(const struct fit *fit, const struct pole *pole)
     double w = cimag(pole->p);
     if (w < fit->w_low || w > fit->w_high || window_was_there_before(fit, pole))
         return false;
-    if (is_companion(fit->segment, pole))
+    /* What does not decay within the record is a tone that came on. */
+    if (-creal(pole->p) * (double)fit->segment->frame_count < 0.05 ||
+        is_companion(fit->segment, pole))
         return false;
     return !pole->is_carried || cabs(pole->c - pole->tail) > 0.1 * cabs(pole->tail);
 }

@@ -2,7 +2,6 @@
 #include "fit/state.h"
 
 #include <math.h>
-#include <stdlib.h>
 #ifdef FIT_DEBUG
 #include <stdio.h>
 #endif
@@ -15,10 +14,30 @@ static void add(struct reading *reading, enum reason reason, enum verdict verdic
         reading->verdict = verdict;
 }
 
-static int compare_doubles(const void *a, const void *b)
+/* The k-th smallest of values [n], which are reordered (Hoare 1961): qsort may allocate. */
+static double nth_smallest(double *values, size_t n, size_t k)
 {
-    double x = *(const double *)a, y = *(const double *)b;
-    return (x > y) - (x < y);
+    size_t low = 0, high = n - 1;
+    while (low < high) {
+        double pivot = values[low + (high - low) / 2];
+        size_t i = low, j = high;
+        for (;;) {
+            while (values[i] < pivot)
+                i++;
+            while (values[j] > pivot)
+                j--;
+            if (i >= j)
+                break;
+            double swap = values[i];
+            values[i++] = values[j];
+            values[j--] = swap;
+        }
+        if (k <= j)
+            high = j;
+        else
+            low = j + 1;
+    }
+    return values[k];
 }
 
 /* Median over the frequencies: what is left of a mode here and there does not count as noise. */
@@ -29,23 +48,29 @@ static double median_ratio(const struct noise *after, const struct noise *before
     for (size_t i = 1; i < after->bins; i++)
         ratios[n++] =
             after->density[i] / noise_density(before, WANE_PI * (double)i / (double)after->bins);
-    qsort(ratios, n, sizeof *ratios, compare_doubles);
-    return n > 0 ? ratios[n / 2] : 0;
+    return n > 0 ? nth_smallest(ratios, n, n / 2) : 0;
 }
 
-/* Power of the quietest 10 ms of the ring over the noise before it: an input that is left alone is
- * never quieter than its own noise. */
-static double quietest_block(const struct fit *fit)
+static double quietest_block(const float *y, size_t count, size_t block)
 {
-    size_t block = (size_t)(0.01 * fit->strike->rate_hz) + 64;
     double least = INFINITY;
-    for (size_t at = 0; at + block <= fit->segment->frame_count; at += block) {
+    for (size_t at = 0; at + block <= count; at += block) {
         double sum = 0;
         for (size_t n = at; n < at + block; n++)
-            sum += (double)fit->segment->y[n] * (double)fit->segment->y[n];
+            sum += (double)y[n] * (double)y[n];
         least = fmin(least, sum / (double)block);
     }
-    return isfinite(least) ? least / fit->noise.variance * fit->misfit : 0;
+    return least;
+}
+
+/* Power of the quietest 10 ms of the ring over that of the quietest 10 ms before it: an input that
+ * is left alone does not get quieter than it was. 0: unknown. */
+static double measure_quietest(const struct fit *fit)
+{
+    size_t block = (size_t)(0.01 * fit->strike->rate_hz) + 64;
+    double before = quietest_block(fit->workspace->quiet, fit->quiet_end, block);
+    double after = quietest_block(fit->segment->y, fit->segment->frame_count, block);
+    return isfinite(before) && isfinite(after) && before > 0 ? after / before : 0;
 }
 
 void verdict_measure(struct fit *fit)
@@ -71,7 +96,7 @@ void verdict_measure(struct fit *fit)
     spectrum_measure_noise(fit->workspace->spectrum, r + segment->frame_count - tail, tail, 1e-16,
                            NOISE_ALONE, &after);
     fit->noise_after = median_ratio(&after, &fit->noise) * fit->misfit;
-    fit->quietest = quietest_block(fit);
+    fit->quietest = measure_quietest(fit);
 }
 
 static void judge_input(const struct fit *fit, struct reading *reading)

@@ -13,9 +13,9 @@
 /* Least variance a sample: the grain of 24-bit samples, step^2 / 12. */
 #define GRAIN_24_BIT 1.18e-15
 
-/* No input that listens is quieter than -100 dBFS (16-bit samples alone have -98): below it the
+/* No input that listens is quieter than -114 dBFS: below it the
  * span before the strike was made by an editor, and says nothing of the noise in the ring. */
-#define DIGITAL_SILENCE 5e-11
+#define DIGITAL_SILENCE 2e-12
 
 /* Takes carried modes out of residual [0, count) as predicted from the strike before. */
 static void subtract_carried(const struct fit *fit, float *y, size_t count)
@@ -142,16 +142,38 @@ bool window_was_there_before(const struct fit *fit, const struct pole *pole)
     return amplitude * amplitude > 12 * noise && amplitude > 0.4 * at_onset;
 }
 
-/* The mean of the quiet span is the card's offset, not part of the strike. */
+/* The mean of the quiet span is the card's offset, not part of the strike. Weighted by sin^4, so
+ * that hum, which does not end on a whole period, leaves nothing in it. */
 static void take_offset_out(struct fit *fit)
 {
     const struct strike *strike = fit->strike;
-    double sum = 0;
-    for (size_t n = 0; n < fit->quiet_end; n++)
-        sum += (double)strike->samples[n];
-    float offset = fit->quiet_end > 0 ? (float)(sum / (double)fit->quiet_end) : 0;
+    size_t count = fit->quiet_end;
+    double complex turn = cexp(J * 2 * WANE_PI / (double)(count > 0 ? count : 1));
+    double complex at = csqrt(turn);
+    double sum = 0, weights = 0;
+    for (size_t n = 0; n < count; n++) {
+        double hann = 0.5 - 0.5 * creal(at);
+        sum += (double)strike->samples[n] * hann * hann;
+        weights += hann * hann;
+        at *= turn;
+    }
+    float offset = weights > 0 ? (float)(sum / weights) : 0;
     for (size_t n = 0; n < strike->frame_count; n++)
         fit->workspace->y[n] = strike->samples[n] - offset;
+}
+
+/* The loudest block of the quiet span, as a mean square: coloured noise comes in bursts that white
+ * noise of the same power does not have. */
+static double loudest_block(const struct fit *fit, size_t block)
+{
+    double loudest = 0;
+    for (size_t at = 0; at + block <= fit->quiet_end; at += block) {
+        double sum = 0;
+        for (size_t n = at; n < at + block; n++)
+            sum += (double)fit->workspace->quiet[n] * (double)fit->workspace->quiet[n];
+        loudest = fmax(loudest, sum / (double)block);
+    }
+    return loudest * fit->misfit;
 }
 
 void window_prepare(struct fit *fit)
@@ -330,9 +352,13 @@ enum walk window_walk_back(struct fit *fit)
         return WALK_ENDED;
     for (unsigned k = 0; k < segment->pole_count; k++)
         density[k] = noise_density(&fit->noise, cimag(segment->poles[k].p));
-    size_t block = (size_t)(0.00025 * fit->strike->rate_hz);
-    block = block < 8 ? 8 : block;
-    double limit = 1 + 5 * sqrt(2.0 / (double)block), noise = fit->noise.variance;
+    double quickest = 0;
+    for (unsigned k = 0; k < segment->pole_count; k++)
+        quickest = fmax(quickest, -creal(segment->poles[k].p));
+    size_t block = (size_t)fmin(0.00025 * fit->strike->rate_hz, 0.5 / fmax(quickest, 1e-9));
+    block = block < 4 ? 4 : block;
+    double noise = fit->noise.variance;
+    double limit = fmax(1 + 5 * sqrt(2.0 / (double)block), 1.2 * loudest_block(fit, block) / noise);
     size_t reach = (size_t)(0.006 * fit->strike->rate_hz);
     size_t least = fit->blow > reach ? fit->blow - reach : 0;
     size_t at = fit->begin;
