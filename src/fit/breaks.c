@@ -311,8 +311,13 @@ void breaks_find(struct fit *fit)
         fit_side(fit, left, at, &lines, &before);
         fit_side(fit, at, right, &lines, &after);
         size_t near = at + 2 * block < right ? at + 2 * block : right;
-        double jump = left_by(y, at, near, left, &before) - left_by(y, at, near, at, &after);
-        if (jump > JUMP_LEAST * JUMP_LEAST * energy_of(y, at, near))
+        size_t last_before = at > left + 2 * block ? at - 2 * block : left;
+        double own_after = left_by(y, at, near, at, &after);
+        double own_before = left_by(y, last_before, at, left, &before);
+        double jump = left_by(y, at, near, left, &before) - own_after;
+        /* A jump stands clear of what each side leaves by itself: misfit does not. */
+        if (jump > JUMP_LEAST * JUMP_LEAST * energy_of(y, at, near) &&
+            jump > 2 * (own_after + own_before))
             classify(fit, &before, left, at, before.c, after.c);
     }
     segment_begin(segment, y + fit->begin, fit->end - fit->begin);

@@ -82,5 +82,5 @@ bool clip_is_bent(struct fit *fit, double loss)
     double harmonic = 2 * cabs(sum) / norm;
     double noise = 6 * noise_density(&fit->noise, w) / (double)count;
     return harmonic * harmonic > 16 * noise && harmonic > 0.08 * loss * cabs(lead->c) &&
-           harmonic > 0.002 * cabs(lead->c);
+           harmonic < 1.5 * loss * cabs(lead->c) && harmonic > 0.002 * cabs(lead->c);
 }

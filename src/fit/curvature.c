@@ -12,6 +12,30 @@ struct half {
     double u_a[POLES_MAX], u_w[POLES_MAX];
 };
 
+/* By how much the residual beside a pole exceeds the noise: probes a few line widths away, each
+ * Exp(1) where noise alone is left. A half that is no exponential itself says little about its
+ * rate. */
+static double excess_beside(struct fit *fit, const struct pole *pole)
+{
+    static const double offsets[] = {-6, -4, -2.5, 2.5, 4, 6};
+    struct segment *segment = fit->segment;
+    struct moments moments = {.m = (double complex(*)[MOMENT_ORDERS])segment->spare_moments};
+    double a = -creal(pole->p), sum = 0;
+    size_t length = pole_length(pole, segment->frame_count);
+    double norm = (1 - exp(-2 * a * (double)segment->frame_count)) / (2 * a);
+    double density = noise_density(&fit->noise, cimag(pole->p));
+    unsigned count = sizeof offsets / sizeof offsets[0];
+    candidates_residual(fit);
+    for (unsigned i = 0; i < count; i++) {
+        double complex p = pole->p + J * offsets[i] * a, s[2];
+        moments_gather(fit->workspace->residual, length, p, moments_block_for(length),
+                       segment->table, &moments);
+        moments_evaluate(&moments, p, s);
+        sum += (creal(s[0]) * creal(s[0]) + cimag(s[0]) * cimag(s[0])) / (density * norm);
+    }
+    return fmax(1, sum / count);
+}
+
 static void fit_half(struct fit *fit, size_t from, size_t count, const struct pole *poles,
                      unsigned pole_count, struct half *out)
 {
@@ -46,6 +70,14 @@ static void fit_half(struct fit *fit, size_t from, size_t count, const struct po
         out->u_w[k] = sqrt(density * column[i + 1]);
         out->p[k] = pole->p;
         out->is_known[k] = true;
+    }
+    unsigned lead = fit->lead_pole;
+    for (unsigned k = 0; k < segment->pole_count; k++) {
+        if (origin[k] != lead || !out->is_known[lead])
+            continue;
+        double widen = sqrt(excess_beside(fit, &segment->poles[k]));
+        out->u_a[lead] *= widen;
+        out->u_w[lead] *= widen;
     }
 }
 

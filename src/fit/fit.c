@@ -298,6 +298,7 @@ bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
     if (has_modes)
         allow_for_misfit(&fit);
     has_modes = has_modes && settle(&fit);
+    fit.segment->work = 0; /* the examination has an allowance of its own */
     if (has_modes)
         examine(&fit);
     uncertainty_fill(&fit, &reading);

@@ -7,6 +7,10 @@
 #endif
 #include <string.h>
 
+/* Uncertainties by which early and late must differ: the two are read from two halves only, and
+ * their misfit is known by a few probes. */
+#define SURE 4.0
+
 static void add(struct reading *reading, enum reason reason, enum verdict verdict)
 {
     reading->reasons |= 1u << reason;
@@ -180,7 +184,7 @@ static void judge_curvature(struct fit *fit, struct reading *reading)
             "EARLYLATE a %.4g early %.4g late %.4g u %.3g  f move %.3g ppm u %.3g misfit %.3g\n", a,
             early, late, lead->u_a * rate, moved / w * 1e6, lead->u_w / w * 1e6, fit->misfit);
 #endif
-    bool is_bent = fabs(early - late) > 3 * lead->u_a * rate &&
+    bool is_bent = fabs(early - late) > SURE * lead->u_a * rate &&
                    fabs(early - late) > fit->settings.not_exponential * a;
     /* A bent input is looked for below that, too: its harmonics give it away. */
     double loss = 1 - exp((early - late) * 0.6 / a);
@@ -193,7 +197,7 @@ static void judge_curvature(struct fit *fit, struct reading *reading)
         reading->why.late_per_s = late;
         add(reading, REASON_NOT_EXPONENTIAL, VERDICT_DOUBTFUL);
     }
-    if (moved > 3 * lead->u_w && moved > fit->settings.gliding * w) {
+    if (moved > SURE * lead->u_w && moved > fit->settings.gliding * w) {
         reading->why.early_hz = cimag(lead->early) * rate / (2 * WANE_PI);
         reading->why.late_hz = cimag(lead->late) * rate / (2 * WANE_PI);
         add(reading, REASON_GLIDING, VERDICT_DOUBTFUL);
