@@ -12,9 +12,10 @@
 #define NEAR_WIDTHS  12
 #define NEAR_SHARE   0.01
 #define CLOSE_WIDTHS 4
-#define ENERGY_SHARE 1e-6  /* of the whole: weaker modes do not matter to anyone */
-#define A_MAX        1.5   /* per sample */
-#define BLOW_S       0.005 /* the longest contact of a usual tap */
+#define ENERGY_SHARE 1e-6 /* of the whole: weaker modes do not matter to anyone */
+#define A_MAX                                                                                      \
+    0.35 /* per sample: a quicker pole is over before a band-limited input has followed it */
+#define BLOW_S 0.005 /* the longest contact of a usual tap */
 
 void candidates_residual(struct fit *fit)
 {
@@ -295,7 +296,7 @@ static bool straighten_slow_poles(struct fit *fit)
 static void search_all(struct fit *fit)
 {
     struct segment *segment = fit->segment;
-    for (int round = 0; round < ROUNDS_MAX && segment->work < segment->work_max / 2; round++) {
+    for (int round = 0; round < ROUNDS_MAX && segment_may_work(segment, 0.5); round++) {
         if (search_round(fit) == 0)
             break;
         if (!refine_poles(segment, 30)) {

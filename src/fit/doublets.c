@@ -205,7 +205,7 @@ void doublets_resolve(struct fit *fit)
     bool is_done[POLES_MAX] = {false};
     fit->unresolved_w = 0;
     memset(fit->is_curved, 0, sizeof fit->is_curved);
-    for (int split = 0; split < SPLITS_MAX && segment->work < segment->work_max * 3 / 4; split++) {
+    for (int split = 0; split < SPLITS_MAX && segment_may_work(segment, 0.75); split++) {
         int wanting = find_wanting(fit, is_done, SCORE_LEAST);
         if (wanting < 0)
             return;

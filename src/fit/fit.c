@@ -250,6 +250,7 @@ static void allow_for_misfit(struct fit *fit)
     fit->noise.variance *= excess;
     fit->noise.lowest *= excess;
     fit->misfit = excess;
+    fit->misfit_share = left / whole;
 }
 
 /* Walks to the onset; where a quick mode only shows on the way, with it once more. */
@@ -287,7 +288,7 @@ bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
     fit.w_high = 2 * WANE_PI * fit.settings.f_high_hz / strike->rate_hz;
     fit.misfit = 1;
     fit.segment->work = 0;
-    fit.segment->work_max = SIZE_MAX;
+    fit.segment->work_max = 0;
     fit.segment->negligible = 0;
     window_prepare(&fit);
     fit.segment->work = 0;

@@ -35,7 +35,7 @@ struct pole {
     double complex tail; /* what the earlier strike predicts for c */
 };
 
-/* Length, in samples, over which a pole's term is kept: exp(-12) = 6e-6 beyond is nothing beside
+/* Length, in samples, over which a pole's term is kept: exp(-16) = 1e-7 beyond is nothing beside
  * the float samples' own grain, and short terms make short passes. */
 size_t pole_length(const struct pole *pole, size_t frame_count);
 

@@ -12,6 +12,11 @@
 #define STRAIN_MAX    0.02
 #define STRAIN_COARSE 0.3
 
+bool segment_may_work(const struct segment *segment, double share)
+{
+    return segment->work_max == 0 || (double)segment->work < share * (double)segment->work_max;
+}
+
 void segment_begin(struct segment *segment, const float *y, size_t frame_count)
 {
     segment->y = y;
@@ -227,7 +232,7 @@ bool refine_poles(struct segment *segment, unsigned steps_max)
     double strain_max = STRAIN_COARSE;
     if (!evaluate(segment, strain_max, data_sums))
         return false;
-    for (unsigned step = 0; step < steps_max && segment->work < segment->work_max; step++) {
+    for (unsigned step = 0; step < steps_max && segment_may_work(segment, 1); step++) {
         memcpy(before, segment->poles, sizeof before);
         double explained_before = segment->explained;
         bool is_better = false;
@@ -251,7 +256,8 @@ bool refine_poles(struct segment *segment, unsigned steps_max)
         } else {
             damping *= 0.1;
             bool is_still = segment->explained - explained_before < segment->negligible;
-            if (size < 1e-6 || (is_still && strain_max == STRAIN_MAX && size < 1e-2)) {
+            if (size < 1e-6 ||
+                (is_still && damping < 1e-8 && strain_max == STRAIN_MAX && size < 1e-4)) {
                 if (size < 1e-6 || was_still)
                     break;
             }

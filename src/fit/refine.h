@@ -21,7 +21,8 @@ struct segment {
     size_t frame_count;
     struct pole poles[POLES_MAX];
     unsigned pole_count;
-    size_t work, work_max; /* cost so far, in units of about half a microsecond, and its bound */
+    size_t work,
+        work_max; /* cost so far, in units of about half a microsecond, and its bound (0: none) */
     double negligible; /* gain of energy that means nothing beside the noise: where refining ends */
     double explained;  /* energy of the model's projection; filled by refine_* */
 
@@ -35,6 +36,9 @@ struct segment {
     double *matrix;                    /* [PARAMETERS_MAX x PARAMETERS_MAX] */
     double complex (*pair_sums)[2][3]; /* [POLES_MAX x POLES_MAX][conjugate or not][n^m] */
 };
+
+/* Is less than `share` of the allowance spent? An allowance of 0 has no bound. */
+bool segment_may_work(const struct segment *segment, double share);
 
 /* Starts a segment with no poles; the scratch pointers stay. */
 void segment_begin(struct segment *segment, const float *y, size_t frame_count);

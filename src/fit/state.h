@@ -51,13 +51,15 @@ struct fit {
     double gain_db;                                 /* by how much the input moved its gain */
     size_t clipped, clipped_early, clipped_in_blow; /* samples */
     double clipped_share;                           /* of the window's first third */
+    bool was_restless;                              /* the noise before the strike came in bursts */
     bool is_noise_from_tail; /* nothing before the strike to measure it from */
     size_t lost_at;          /* where the driver says that frames are missing; 0: nowhere */
     double
         quietest; /* quietest 10 ms of the ring over the quietest before it, powers; 0: unknown */
-    double noise_after; /* variance in the window's last part over the noise before; 0: unknown */
-    double misfit;      /* by how much what the modes leave exceeds the noise, 1: not at all */
-    double unexplained; /* share of the energy */
+    double noise_after;  /* variance in the window's last part over the noise before; 0: unknown */
+    double misfit;       /* by how much what the modes leave exceeds the noise, 1: not at all */
+    double misfit_share; /* of the ring's energy */
+    double unexplained;  /* share of the energy */
 };
 
 /* noise and window: window.c */

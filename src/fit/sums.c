@@ -5,7 +5,7 @@
 size_t pole_length(const struct pole *pole, size_t frame_count)
 {
     double a = -creal(pole->p);
-    double length = 12.0 / (a > 1e-12 ? a : 1e-12);
+    double length = 16.0 / (a > 1e-12 ? a : 1e-12);
     return length < (double)frame_count ? (size_t)length + 1 : frame_count;
 }
 

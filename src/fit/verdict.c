@@ -9,7 +9,9 @@
 
 /* Uncertainties by which early and late must differ: the two are read from two halves only, and
  * their misfit is known by a few probes. */
-#define SURE 4.0
+#define SURE           4.0
+#define MISFIT_U_MOST  0.03
+#define RESTLESS_SHARE 0.02
 
 static void add(struct reading *reading, enum reason reason, enum verdict verdict)
 {
@@ -67,6 +69,23 @@ static double quietest_block(const float *y, size_t count, size_t block)
     return least;
 }
 
+/* Was the span before the strike restless: a block of 10 ms far over the median one, and not small
+ * beside the ring? Speech and work at the bench are; a ring in them cannot be told from them. */
+static bool was_restless(const struct fit *fit)
+{
+    double powers[128];
+    size_t block = (size_t)(0.01 * fit->strike->rate_hz), n = 0;
+    double loudest = 0;
+    for (size_t at = 0; at + block <= fit->quiet_end && n < 128; at += block) {
+        powers[n] = quietest_block(fit->workspace->quiet + at, block, block);
+        loudest = fmax(loudest, powers[n++]);
+    }
+    if (n < 4)
+        return false;
+    double ring = quietest_block(fit->segment->y, block, block);
+    return loudest > 6 * nth_smallest(powers, n, n / 2) && loudest > RESTLESS_SHARE * ring;
+}
+
 /* Power of the quietest 10 ms of the ring over that of the quietest 10 ms before it: an input that
  * is left alone does not get quieter than it was. 0: unknown. */
 static double measure_quietest(const struct fit *fit)
@@ -91,8 +110,9 @@ void verdict_measure(struct fit *fit)
     }
     double noise = fit->noise.variance * (double)span;
     double tones = fit->tone_variance * (double)span;
-    fit->unexplained = fmax(0, left - 2 * noise - 4 * fit->noise.variance * sqrt((double)span)) /
+    fit->unexplained = fmax(0, left - 1.3 * noise - 4 * fit->noise.variance * sqrt((double)span)) /
                        fmax(whole - noise - tones, 1e-30);
+    fit->was_restless = segment->frame_count > 1024 && was_restless(fit);
     size_t tail = segment->frame_count / 4;
     if (!fit->noise.is_measured || fit->is_noise_from_tail || tail < 256)
         return;
@@ -151,7 +171,7 @@ static void judge_lead(const struct fit *fit, struct reading *reading)
         reading->why.span_s = span_s;
         add(reading, REASON_TOO_SHORT, VERDICT_DOUBTFUL);
     }
-    bool has_risen = fit->noise_after > 2;
+    bool has_risen = fit->noise_after > 2 || fit->was_restless;
     if (relative_u > 0.1 || has_risen) {
         reading->why.noise_dbfs =
             10 * log10(2 * fit->noise.variance / fit->misfit * fmax(fit->noise_after, 1));
@@ -236,7 +256,15 @@ void verdict_judge(struct fit *fit, struct reading *reading)
     if (fit->tone_count > 0)
         reading->remarks |= 1u << REMARK_HUM;
     judge_input(fit, reading);
-    if (reading->mode_count == 0 || fit->unexplained > 0.05) {
+    /* Misfit that makes even the lead uncertain is no misfit: the sound is not made of these modes.
+     */
+    bool is_made_of_modes = reading->mode_count > 0 && fit->unexplained <= 0.05;
+    if (is_made_of_modes && fit->misfit > 1.5 &&
+        reading->modes[0].decay_u_per_s > MISFIT_U_MOST * reading->modes[0].decay_per_s) {
+        is_made_of_modes = false;
+        fit->unexplained = fmax(fit->unexplained, fit->misfit_share);
+    }
+    if (!is_made_of_modes) {
         if (reading->mode_count > 0)
             reading->why.unexplained = fmin(fit->unexplained, 1);
         if ((reading->reasons & (1u << REASON_DOUBLE_HIT | 1u << REASON_SAMPLES_LOST)) == 0)
@@ -249,6 +277,8 @@ void verdict_judge(struct fit *fit, struct reading *reading)
         judge_curvature(fit, reading);
         judge_steering(fit, reading);
     }
+    if (reading->mode_count == fit->settings.modes_max && fit->unresolved_w <= 0)
+        fit->unresolved_w = 2 * WANE_PI * reading->modes[0].f_hz / fit->strike->rate_hz;
     if (fit->unresolved_w > 0) {
         reading->why.near_hz = fit->unresolved_w * fit->strike->rate_hz / (2 * WANE_PI);
         add(reading, REASON_UNRESOLVED, VERDICT_DOUBTFUL);
