@@ -317,7 +317,7 @@ void breaks_find(struct fit *fit)
         double jump = left_by(y, at, near, left, &before) - own_after;
         /* A jump stands clear of what each side leaves by itself: misfit does not. */
         if (jump > JUMP_LEAST * JUMP_LEAST * energy_of(y, at, near) &&
-            jump > 2 * (own_after + own_before))
+            jump > 3 * (own_after + own_before))
             classify(fit, &before, left, at, before.c, after.c);
     }
     segment_begin(segment, y + fit->begin, fit->end - fit->begin);

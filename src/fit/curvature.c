@@ -15,7 +15,7 @@ struct half {
 /* By how much the residual beside a pole exceeds the noise: probes a few line widths away, each
  * Exp(1) where noise alone is left. A half that is no exponential itself says little about its
  * rate. */
-static double excess_beside(struct fit *fit, const struct pole *pole)
+double curvature_excess(struct fit *fit, const struct pole *pole)
 {
     static const double offsets[] = {-6, -4, -2.5, 2.5, 4, 6};
     struct segment *segment = fit->segment;
@@ -25,7 +25,6 @@ static double excess_beside(struct fit *fit, const struct pole *pole)
     double norm = (1 - exp(-2 * a * (double)segment->frame_count)) / (2 * a);
     double density = noise_density(&fit->noise, cimag(pole->p));
     unsigned count = sizeof offsets / sizeof offsets[0];
-    candidates_residual(fit);
     for (unsigned i = 0; i < count; i++) {
         double complex p = pole->p + J * offsets[i] * a, s[2];
         moments_gather(fit->workspace->residual, length, p, moments_block_for(length),
@@ -63,7 +62,7 @@ static void fit_half(struct fit *fit, size_t from, size_t count, const struct po
         if (parameters[i].what != PARAMETER_A || pole->kind != POLE_RING)
             continue;
         unsigned k = origin[parameters[i].pole];
-        double density = noise_density(&fit->noise, cimag(pole->p));
+        double density = noise_density(&fit->plain, cimag(pole->p)) * fit->misfit;
         matrix_inverse_column(segment->matrix, n, scale, i, column);
         out->u_a[k] = sqrt(density * column[i]);
         matrix_inverse_column(segment->matrix, n, scale, i + 1, column);
@@ -72,10 +71,11 @@ static void fit_half(struct fit *fit, size_t from, size_t count, const struct po
         out->is_known[k] = true;
     }
     unsigned lead = fit->lead_pole;
+    candidates_residual(fit);
     for (unsigned k = 0; k < segment->pole_count; k++) {
         if (origin[k] != lead || !out->is_known[lead])
             continue;
-        double widen = sqrt(excess_beside(fit, &segment->poles[k]));
+        double widen = sqrt(curvature_excess(fit, &segment->poles[k]));
         out->u_a[lead] *= widen;
         out->u_w[lead] *= widen;
     }

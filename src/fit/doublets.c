@@ -34,7 +34,7 @@ static double doublet_score(struct fit *fit, unsigned k)
         turn *= step;
     }
     double norm = (1 - exp(-2 * a * (double)segment->frame_count)) / (2 * a);
-    double density = noise_density(&fit->noise, cimag(pole->p));
+    double density = noise_density(&fit->plain, cimag(pole->p)) * fit->misfit;
     return (creal(sum) * creal(sum) + cimag(sum) * cimag(sum)) / (density * norm);
 }
 
@@ -70,7 +70,7 @@ static bool try_split(struct fit *fit, unsigned k)
             memcpy(best, segment->poles, sizeof best);
         }
     }
-    double density = noise_density(&fit->noise, cimag(before[k].p));
+    double density = noise_density(&fit->plain, cimag(before[k].p)) * fit->misfit;
     double gain = (best_explained - explained) / (2 * density);
     if (gain < log((double)segment->frame_count) + 8) {
         restore(segment, before, count);
@@ -103,7 +103,7 @@ static bool try_coupling(struct fit *fit, unsigned wanting)
             memcpy(best, segment->poles, sizeof best);
         }
     }
-    double density = noise_density(&fit->noise, fit->w_low);
+    double density = noise_density(&fit->plain, fit->w_low) * fit->misfit;
     double gain = (best_explained - explained) / (2 * density);
     bool is_needed = gain > log((double)segment->frame_count) + 8;
     if (is_needed) {

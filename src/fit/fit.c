@@ -7,8 +7,10 @@
 #include <stdlib.h>
 #include <string.h>
 
-#define MISFIT_MOST 0.03 /* of the ring's energy: more is no misfit but another thing */
-#define WALKS_MAX   12
+#define MISFIT_MOST    0.03 /* of the ring's energy: more is no misfit but another thing */
+#define STEADY_DELAY_S 0.04
+#define STEADIER       0.5 /* of what is left: worth a later begin */
+#define WALKS_MAX      12
 /* Bounds the time whatever the sound, by counting, not by a clock: the same strike gives the same
  * bits. */
 #define WORK_MAX 40000
@@ -226,7 +228,7 @@ static void examine(struct fit *fit)
 /* No real part is exactly the model. What the first fit leaves, where it is more than the noise but
  * little beside the ring, is misfit: from here on it counts as noise, in the tests that decide on
  * modes and begin, and in the uncertainties. */
-static void allow_for_misfit(struct fit *fit)
+static double allow_for_misfit(struct fit *fit)
 {
     const struct segment *segment = fit->segment;
     double slowest = INFINITY, left = 0, whole = 0;
@@ -236,7 +238,7 @@ static void allow_for_misfit(struct fit *fit)
     }
     candidates_residual(fit);
     const float *r = fit->workspace->residual;
-    size_t span = (size_t)fmin(1 / slowest, (double)segment->frame_count);
+    size_t span = (size_t)fmin(fmax(1 / slowest, 2048), (double)segment->frame_count);
     for (size_t n = 0; n < span; n++) {
         left += (double)r[n] * (double)r[n];
         whole += (double)segment->y[n] * (double)segment->y[n];
@@ -244,13 +246,43 @@ static void allow_for_misfit(struct fit *fit)
     double excess = left / ((double)span * fit->noise.variance);
     if (span < 64 || excess < 1 + 6 * sqrt(2.0 / (double)span) || excess < 1.5 ||
         left > MISFIT_MOST * whole)
-        return;
-    for (size_t i = 0; i <= fit->noise.bins; i++)
-        fit->noise.density[i] *= excess;
+        return left / whole;
+    /* Where it lies: beside the lines that are not quite lines. */
+    struct noise misfit;
+    spectrum_measure_noise(fit->workspace->spectrum, r, span, 1e-16, NOISE_ALONE, &misfit);
+    for (size_t i = 0; i <= fit->noise.bins; i++) {
+        double w = WANE_PI * (double)i / (double)fit->noise.bins;
+        fit->noise.density[i] = fmax(fit->noise.density[i], noise_density(&misfit, w));
+    }
     fit->noise.variance *= excess;
-    fit->noise.lowest *= excess;
     fit->misfit = excess;
     fit->misfit_share = left / whole;
+    return left / whole;
+}
+
+/* Where a real part and its room need longer than the blow to come to a steady ring, a fit begun
+ * later leaves much less: then it is the better one, as long as the lead has lost little by then.
+ */
+static bool find_steady_begin(struct fit *fit, double left_share)
+{
+    size_t first = fit->begin;
+    double a = -creal(fit->segment->poles[find_lead(fit)].p);
+    double delay = STEADY_DELAY_S * fit->strike->rate_hz;
+    if (a * delay > 0.15 || (double)first + 8 * delay > (double)fit->end)
+        return true;
+    for (int later = 1; later >= 0; later--) {
+        fit->begin = first + (later ? (size_t)delay : 0);
+        fit->segment->work = 0;
+        fit->noise = fit->plain;
+        fit->misfit = 1;
+        bool has_modes = candidates_fit(fit);
+        if (!later && !has_modes)
+            return false;
+        if (has_modes && allow_for_misfit(fit) < STEADIER * left_share && later)
+            break;
+    }
+    fit->first_begin = fit->begin;
+    return true;
 }
 
 /* Walks to the onset; where a quick mode only shows on the way, with it once more. */
@@ -294,10 +326,14 @@ bool fit_strike(struct fit_workspace *workspace, const struct strike *strike,
     fit.segment->work = 0;
     fit.segment->work_max = WORK_MAX;
     fit.segment->negligible = 1e-5 * fit.noise.variance;
+    fit.plain = fit.noise;
     fit.begin = fit.first_begin = window_first_begin(&fit);
     bool has_modes = candidates_fit(&fit);
-    if (has_modes)
-        allow_for_misfit(&fit);
+    if (has_modes) {
+        double left_share = allow_for_misfit(&fit);
+        if (fit.misfit > 4)
+            has_modes = find_steady_begin(&fit, left_share);
+    }
     has_modes = has_modes && settle(&fit);
     fit.segment->work = 0; /* the examination has an allowance of its own */
     if (has_modes)

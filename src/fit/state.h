@@ -30,8 +30,9 @@ struct fit {
     const struct strike *strike;
     struct fit_settings settings; /* automatic values filled in */
     struct segment *segment;      /* the workspace's */
-    struct noise noise;
-    double w_low, w_high; /* rad a sample */
+    struct noise noise;           /* with the part's misfit, once that is known */
+    struct noise plain;           /* as measured */
+    double w_low, w_high;         /* rad a sample */
     double tones_w[READING_TONES_MAX];
     unsigned tone_count;
     double tone_variance; /* of all tones together */
@@ -59,6 +60,7 @@ struct fit {
     double noise_after;  /* variance in the window's last part over the noise before; 0: unknown */
     double misfit;       /* by how much what the modes leave exceeds the noise, 1: not at all */
     double misfit_share; /* of the ring's energy */
+    double lead_noise_u; /* relative, of the lead's decay, before it is widened by its misfit */
     double unexplained;  /* share of the energy */
 };
 
@@ -101,6 +103,9 @@ void breaks_find(struct fit *fit);
 
 /* Early and late part apart, for all poles: curvature.c. Leaves the segment as it was. */
 void curvature_measure(struct fit *fit);
+
+/* By how much the residual (candidates_residual) beside a pole exceeds the noise; at least 1. */
+double curvature_excess(struct fit *fit, const struct pole *pole);
 
 /* clip.c */
 void clip_count(struct fit *fit);

@@ -80,6 +80,7 @@ void uncertainty_fill(struct fit *fit, struct reading *reading)
     double scale[PARAMETERS_MAX], column[PARAMETERS_MAX];
     unsigned n = refine_information(segment, parameters, scale);
     reading->mode_count = 0;
+    candidates_residual(fit);
     for (unsigned i = 0; i + 1 < n; i++) {
         const struct pole *pole = &segment->poles[parameters[i].pole];
         if (parameters[i].what != PARAMETER_A || pole->kind != POLE_RING ||
@@ -88,7 +89,12 @@ void uncertainty_fill(struct fit *fit, struct reading *reading)
         matrix_inverse_column(segment->matrix, n, scale, i, column);
         double var_a = column[i], cov_aw = column[i + 1];
         matrix_inverse_column(segment->matrix, n, scale, i + 1, column);
-        fill_from_pole(fit, pole, var_a, column[i + 1], cov_aw,
+        double widen = fit->misfit > 1.5 ? curvature_excess(fit, pole) : 1;
+        if (parameters[i].pole == fit->lead_pole)
+            fit->lead_noise_u =
+                sqrt(noise_density(&fit->plain, cimag(pole->p)) * fit->misfit * var_a) /
+                -creal(pole->p);
+        fill_from_pole(fit, pole, widen * var_a, widen * column[i + 1], widen * cov_aw,
                        &reading->modes[reading->mode_count++]);
     }
 }

@@ -9,8 +9,13 @@
 
 /* Uncertainties by which early and late must differ: the two are read from two halves only, and
  * their misfit is known by a few probes. */
-#define SURE           4.0
-#define MISFIT_U_MOST  0.03
+#define SURE          4.0
+#define MISFIT_U_MOST 0.03
+/* Where there were more modes than can be listed, what is left is more of them: unresolved, as long
+ * as those that are listed are most of it. */
+#define CROWD_UNEXPLAINED 0.2
+/* Under it a mode drowns in each single sample: what else is in the noise nobody can tell. */
+#define DROWNED_DB     (-3.0)
 #define RESTLESS_SHARE 0.02
 
 static void add(struct reading *reading, enum reason reason, enum verdict verdict)
@@ -103,14 +108,19 @@ void verdict_measure(struct fit *fit)
     const float *r = fit->workspace->residual;
     double a = -creal(segment->poles[fit->lead_pole].p);
     size_t span = (size_t)fmin(4 / a, (double)segment->frame_count);
+    /* The attack of a long ring is over when 50 ms, of a short one a third of its life, have gone.
+     */
+    size_t from = (size_t)fmin(0.05 * fit->strike->rate_hz, 0.3 / a);
+    from = from < span / 2 ? from : 0;
     double left = 0, whole = 0;
-    for (size_t n = 0; n < span; n++) {
+    for (size_t n = from; n < span; n++) {
         left += (double)r[n] * (double)r[n];
         whole += (double)segment->y[n] * (double)segment->y[n];
     }
+    span -= from;
     double noise = fit->noise.variance * (double)span;
     double tones = fit->tone_variance * (double)span;
-    fit->unexplained = fmax(0, left - 1.3 * noise - 4 * fit->noise.variance * sqrt((double)span)) /
+    fit->unexplained = fmax(0, left - 1.6 * noise - 4 * fit->noise.variance * sqrt((double)span)) /
                        fmax(whole - noise - tones, 1e-30);
     fit->was_restless = segment->frame_count > 1024 && was_restless(fit);
     size_t tail = segment->frame_count / 4;
@@ -119,7 +129,7 @@ void verdict_measure(struct fit *fit)
     struct noise after;
     spectrum_measure_noise(fit->workspace->spectrum, r + segment->frame_count - tail, tail, 1e-16,
                            NOISE_ALONE, &after);
-    fit->noise_after = median_ratio(&after, &fit->noise) * fit->misfit;
+    fit->noise_after = median_ratio(&after, &fit->plain);
     fit->quietest = measure_quietest(fit);
 }
 
@@ -159,7 +169,8 @@ static void judge_lead(const struct fit *fit, struct reading *reading)
     double rate = fit->strike->rate_hz;
     double span_s = ((double)fit->end - (double)fit->begin) / rate;
     double spans = lead->decay_per_s * span_s;
-    double relative_u = lead->decay_u_per_s / lead->decay_per_s;
+    double relative_u =
+        fit->misfit > 1.5 ? fit->lead_noise_u : lead->decay_u_per_s / lead->decay_per_s;
     bool is_cut = fit->strike->end == STRIKE_END_NEXT || fit->strike->end == STRIKE_END_INPUT;
     if (is_cut && spans < 7)
         reading->remarks |= 1u << REMARK_CUT;
@@ -171,7 +182,7 @@ static void judge_lead(const struct fit *fit, struct reading *reading)
         reading->why.span_s = span_s;
         add(reading, REASON_TOO_SHORT, VERDICT_DOUBTFUL);
     }
-    bool has_risen = fit->noise_after > 2 || fit->was_restless;
+    bool has_risen = fit->noise_after > 2 || fit->was_restless || reading->snr_db < DROWNED_DB;
     if (relative_u > 0.1 || has_risen) {
         reading->why.noise_dbfs =
             10 * log10(2 * fit->noise.variance / fit->misfit * fmax(fit->noise_after, 1));
@@ -258,9 +269,10 @@ void verdict_judge(struct fit *fit, struct reading *reading)
     judge_input(fit, reading);
     /* Misfit that makes even the lead uncertain is no misfit: the sound is not made of these modes.
      */
-    bool is_made_of_modes = reading->mode_count > 0 && fit->unexplained <= 0.05;
-    if (is_made_of_modes && fit->misfit > 1.5 &&
-        reading->modes[0].decay_u_per_s > MISFIT_U_MOST * reading->modes[0].decay_per_s) {
+    bool is_full = reading->mode_count == fit->settings.modes_max;
+    bool is_made_of_modes =
+        reading->mode_count > 0 && fit->unexplained <= (is_full ? CROWD_UNEXPLAINED : 0.05);
+    if (is_made_of_modes && fit->misfit > 1.5 && fit->lead_noise_u > MISFIT_U_MOST) {
         is_made_of_modes = false;
         fit->unexplained = fmax(fit->unexplained, fit->misfit_share);
     }
@@ -277,7 +289,7 @@ void verdict_judge(struct fit *fit, struct reading *reading)
         judge_curvature(fit, reading);
         judge_steering(fit, reading);
     }
-    if (reading->mode_count == fit->settings.modes_max && fit->unresolved_w <= 0)
+    if (is_full && fit->unresolved_w <= 0)
         fit->unresolved_w = 2 * WANE_PI * reading->modes[0].f_hz / fit->strike->rate_hz;
     if (fit->unresolved_w > 0) {
         reading->why.near_hz = fit->unresolved_w * fit->strike->rate_hz / (2 * WANE_PI);

@@ -144,7 +144,7 @@ bool window_was_there_before(const struct fit *fit, const struct pole *pole)
 
 /* The mean of the quiet span is the card's offset, not part of the strike. Weighted by sin^4, so
  * that hum, which does not end on a whole period, leaves nothing in it. */
-static void take_offset_out(struct fit *fit)
+static float take_offset_out(struct fit *fit)
 {
     const struct strike *strike = fit->strike;
     size_t count = fit->quiet_end;
@@ -160,6 +160,7 @@ static void take_offset_out(struct fit *fit)
     float offset = weights > 0 ? (float)(sum / weights) : 0;
     for (size_t n = 0; n < strike->frame_count; n++)
         fit->workspace->y[n] = strike->samples[n] - offset;
+    return offset;
 }
 
 /* The loudest block of the quiet span, as a mean square: coloured noise comes in bursts that white
@@ -189,13 +190,20 @@ void window_prepare(struct fit *fit)
         fit->end = fit->lost_at = strike->lost[i].at;
         fit->lost_frames = (double)strike->lost[i].frames;
     }
-    take_offset_out(fit);
+    float offset = take_offset_out(fit);
     float *quiet = workspace->quiet;
     memcpy(quiet, workspace->y, fit->quiet_end * sizeof *quiet);
     subtract_carried(fit, quiet, fit->quiet_end);
     find_tones(fit, quiet, fit->quiet_end);
     spectrum_measure_noise(workspace->spectrum, quiet, fit->quiet_end, GRAIN_24_BIT, NOISE_ALONE,
                            &fit->noise);
+    /* An offset that the noise alone could feign is left where it was: taking it out would only add
+     * it. 35 / (18 count) is the sum of the squares of sin^4 weights over the square of their sum.
+     */
+    double offset_u =
+        sqrt(noise_density(&fit->noise, fit->w_low) * 35 / (18 * (double)fit->quiet_end + 1));
+    if (fabs((double)offset) < 5 * offset_u)
+        memcpy(workspace->y, strike->samples, strike->frame_count * sizeof *workspace->y);
     /* Slow wander lies below the lowest bins: in time it counts. */
     double power = 0;
     for (size_t n = 0; n < fit->quiet_end; n++)
