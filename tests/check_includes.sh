@@ -12,8 +12,8 @@ declare -A may=(
     [detect]='base detect'
     [fit]='base fit'
     [series]='base series part statistics constants watch gauge'
-    [log]='base log series part statistics constants watch gauge clock queue'
-    [serve]='base serve log series part statistics constants watch gauge clock queue'
+    [log]='base log series part statistics constants watch gauge clock queue tally report'
+    [serve]='base serve log series part statistics constants watch gauge clock queue tally report'
     [daemon]='*'
     [cli]='*'
 )

@@ -81,6 +81,14 @@ void log_writer_close(struct log_writer *writer);
 /* Random, made with the log and kept in it: a page that sees another token must forget its ids. */
 const char *log_writer_token(const struct log_writer *writer);
 
+/* What the caller adds to the JSON of each reading that is stored from now on: keys into an open
+ * object. write NULL (the default): nothing. */
+struct log_judge {
+    void (*write)(void *user, struct json_writer *json, const struct reading *reading);
+    void *user;
+};
+void log_writer_set_judge(struct log_writer *writer, const struct log_judge *judge);
+
 /* What the caller knows of a strike beside its samples and its reading. */
 struct log_context {
     int64_t time_ms;   /* of the onset */

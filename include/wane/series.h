@@ -160,6 +160,25 @@ bool series_is_odd(const struct series *series, int64_t id);
  * SERIES_MORE_MAX; 0: reached. At least 3 strikes in all: a spread of two is luck. -1 below 2. */
 int strikes_more(size_t n, double sd, double half_width);
 
+/* The modes as they are followed now. */
+const struct tracks *series_tracks(const struct series *series);
+
+/* Follows the reading and gives its modes the tracks' labels; "other" for those that no track has.
+ * Without any track yet the labels stay as they are. */
+void tracks_label(struct tracks *tracks, struct reading *reading, bool learns);
+
+/* decide_strike for a reading that carries the sheet's labels. A rejected strike has no values to
+ * decide on: 0. */
+unsigned part_decide(const struct part *part, const struct reading *reading, double clock_u_ppm,
+                     struct limit_result out_results[LIMITS_MAX], enum decision *out_all);
+
+/* The odd strikes of the last summary, ids growing; gives how many were written. */
+unsigned series_odd_ids(const struct series *series, int64_t *out_ids, unsigned ids_max);
+
+/* The lead mode of a strike that counts: f, decay, their u, level, label; the rest 0. false: no
+ * such strike, it does not count, or it lacks the mode. */
+bool series_lead(const struct series *series, int64_t id, struct mode *out_mode);
+
 /* --- comparing --- */
 
 struct mode_difference {
@@ -194,6 +213,10 @@ struct ring ring_of_series(const struct series_mode *mode, double clock_u_ppm);
  * Gives how many were written; 0 for a sheet without a body. */
 unsigned part_constants(const struct part *part, const struct ring *rings,
                         struct part_constant out_constants[PART_CONSTANTS_MAX]);
+
+/* For people: value and u with the prefix that the unit is read with (Pa: GPa; H: mH; F: nF).
+ * *out_unit: static text. */
+struct measured constant_for_people(const struct part_constant *constant, const char **out_unit);
 
 /* The array [{"name","unit","value","u","source","remark","budget":[{"of","share"}]}]; value and u
  * are null, and the remark says why, where a constant is not known. share: in the constant's unit.

@@ -14,7 +14,7 @@
  *             "lost_frames":0 (since it was opened),"opened":TIME},
  *    "level":{"dbfs","noise_dbfs","trigger_dbfs","clipped","ringing"} (null without an input),
  *    "trigger":{as GET /trigger},
- *    "series":null or {as GET /series/ID, see log.h; its statistics come later},
+ *    "series":null or {"id","name","input","part","specimen"}: GET /series/ID tells the rest,
  *    "log":{"token","path","newest":ID,"revision":R,"strikes":N,
  *           "state":"keeping"|"full"|"closed","text":null or why,"unkept":N (heard, not kept),
  *           "unkept_since":TIME or null,"unread":N (kept, not yet read)},
@@ -23,6 +23,19 @@
  * GET, PUT /api/v1/trigger (ETag; PUT needs If-Match); null: chosen by itself
  *   {"trigger_db":null|6...60 (over the floor),"f_low_hz":null,"f_high_hz":null,"hold_off_s":null,
  *    "window_max_s":null}
+ * GET /api/v1/series/ID: see log_read_series_json, with "part_problem" (why the sheet that the
+ *   series names is not used, or null) and "statistics" (series.h)
+ * PATCH /api/v1/series/ID {"name","close":true}, or {"specimen":"17"} or {"next_specimen":true}
+ *   (counts the number at its end up): the next specimen closes this series and opens a new one for
+ *   the same part; the answer is the new series
+ * GET /api/v1/series/ID/report, /api/v1/strikes/ID/report: one HTML file, ready to print
+ * GET /api/v1/parts
+ *   {"parts":[{"name","version","changed","etag"} (in the log), {"name","file":true,"etag"} (in a
+ *    folder)]}
+ * PUT /api/v1/parts/NAME {"sheet"}; a sheet with mistakes is refused (422), "complaints":["..."]
+ *   has all of them with their lines
+ * Strikes of a series with a part sheet have "decision":"inside"|"outside"|"not-decided"|null and
+ *   "limits":[as in the statistics]; their modes carry the series' labels, "other" for the rest
  * GET /api/v1/inputs
  *   {"inputs":[{"name","kind":"card"|"simulated","host","channels","rate_hz","warnings":[]}]}
  * PUT /api/v1/input {"name":"...","rate_hz":null,"channel":1 or "channels_heard":[1,2]}
@@ -67,6 +80,7 @@
 #include "wane/detect.h"
 #include "wane/error.h"
 #include "wane/fit.h"
+#include "wane/tally.h"
 #include "wane/text.h"
 
 #include <stdint.h>
@@ -82,7 +96,7 @@ enum serve_call {
     SERVE_PATCH_STRIKE,    /* id, has_note, note, has_set_aside, set_aside */
     SERVE_REREAD,          /* id, fit */
     SERVE_OPEN_SERIES,     /* name, part, specimen (each may be NULL) */
-    SERVE_PATCH_SERIES,    /* id, name, close */
+    SERVE_PATCH_SERIES,    /* id, name, close, specimen or next_specimen */
     SERVE_PUT_PART,        /* name, sheet, if_match */
     SERVE_ADD_MEASUREMENT, /* name, value, unit */
     SERVE_LIST_INPUTS,     /* - */
@@ -92,6 +106,8 @@ enum serve_call {
     SERVE_PLOT,            /* id, width, from_s, to_s (NAN: all) */
     SERVE_READ_RECORDING,  /* recording_fd (closed by serve), name, channel (0: all) */
     SERVE_RECENT,          /* seconds */
+    SERVE_REPORT,          /* id of a series */
+    SERVE_REPORT_STRIKE,   /* id of a strike */
 };
 
 /* One job. serve owns it; the daemon keeps the pointer until it calls serve_answer or serve_refuse,
@@ -101,7 +117,7 @@ struct serve_job {
     enum serve_call call;
     int64_t id;
     const char *name, *part, *specimen, *note, *set_aside, *unit, *sheet, *if_match;
-    bool has_note, has_set_aside, close;
+    bool has_note, has_set_aside, close, next_specimen;
     double value, rate_hz, from_s, to_s, seconds;
     unsigned width;
     int channel;
@@ -123,8 +139,8 @@ void serve_refuse(struct serve_job *job, const struct error *err);
  * for more than a moment. */
 struct serve_daemon {
     void *user;
-    /* The keys of /state but those that serve knows itself (version, time, watchers), into an open
-     * object. */
+    /* The keys of /state but those that serve knows itself (version, time, watchers, can_change),
+     * into an open object. */
     void (*write_state)(void *user, struct json_writer *json);
     /* The trigger object's text and its ETag (with quotes), out_etag [at least 32]. */
     void (*write_trigger)(void *user, struct text *out, char *out_etag, size_t out_etag_size);
@@ -132,6 +148,8 @@ struct serve_daemon {
     bool (*take_job)(void *user, struct serve_job *job);
     /* Numbers for /metrics, OpenMetrics text, without the closing line. */
     void (*write_metrics)(void *user, struct text *out);
+    /* A sentence for the service's journal (wrong tries at the door); may be NULL. */
+    void (*tell)(void *user, const char *sentence);
 };
 
 struct serve_settings {
@@ -140,8 +158,15 @@ struct serve_settings {
     const char *web_dir;    /* NULL: the page is not served */
     const char *vendor_dir; /* uPlot's two files, or NULL */
     const char *log_path;
+    const struct shelf *shelf; /* part sheets beside the log's; lives as long as the server */
     const char *version;
     unsigned watchers_max; /* 0: SERVE_WATCHERS_MAX */
+    /* Off the loopback only: TLS and an invitation are then needed. */
+    const char *state_dir;                 /* for door.json and door.pem; NULL: such addresses are
+                                              refused */
+    const char *names;                     /* the machine's, commas between, or NULL */
+    const char *tls_key, *tls_certificate; /* PEM files; NULL: made on first use */
+    double code_valid_s;                   /* of an invitation; 0: 600 */
 };
 
 struct server;
@@ -154,6 +179,8 @@ struct server *serve_start(const struct serve_settings *settings, const struct s
 
 /* "http://127.0.0.1:9263/" with the port that was taken. Lives as long as the server. */
 const char *serve_url(const struct server *server);
+/* SHA-256 of the certificate, "AB:CD:..."; NULL: plain HTTP on the loopback. */
+const char *serve_fingerprint(const struct server *server);
 
 /* No new connections and no new jobs; streams end. Jobs that were taken must still be answered. */
 void serve_quiet(struct server *server);

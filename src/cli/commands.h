@@ -7,6 +7,9 @@ int cmd_read(int argc, char **argv);
 int cmd_simulate(int argc, char **argv);
 int cmd_inputs(int argc, char **argv);
 int cmd_log(int argc, char **argv);
+int cmd_invite(int argc, char **argv);
 int cmd_export(int argc, char **argv);
+int cmd_series(int argc, char **argv);
+int cmd_report(int argc, char **argv);
 
 #endif

@@ -16,6 +16,9 @@ static const struct {
     {"inputs", cmd_inputs, "list the sound-card inputs, and the words for them"},
     {"log", cmd_log, "look into a log"},
     {"export", cmd_export, "write a log out"},
+    {"series", cmd_series, "list, show and compare series of strikes"},
+    {"report", cmd_report, "make a page on a series or a strike, ready to print"},
+    {"invite", cmd_invite, "let a browser in from another machine, and shut it out"},
     {"simulate", cmd_simulate, "write a recording of the simulated bench, and its truth"},
 };
 

@@ -6,6 +6,7 @@
 
 #include "cli/read_recording.h"
 #include "wane/json.h"
+#include "wane/report.h"
 
 #include <stdio.h>
 #include <stdlib.h>
@@ -50,6 +51,24 @@ static bool answer_plot(struct desk *desk, struct serve_job *job, struct error *
         serve_answer(job, 200, NULL, NULL, &text);
     text_done(&text);
     return is_drawn;
+}
+
+static bool answer_report(struct desk *desk, struct serve_job *job, struct error *err)
+{
+    const struct report_choice choice = {
+        .series = job->call == SERVE_REPORT ? job->id : 0,
+        .strike = job->id,
+        .version = WANE_VERSION,
+        .now_ms = clock_utc_ms(),
+    };
+    struct text page = {0};
+    if (!follow_log(desk, err) ||
+        !report_write(desk->log, &desk->pipeline->shelf, &choice, &page, err)) {
+        text_done(&page);
+        return false;
+    }
+    serve_answer(job, 200, "text/html; charset=utf-8", NULL, &page);
+    return true;
 }
 
 /* Takes malloc's bytes over as a text. */
@@ -267,6 +286,8 @@ static void do_job(struct desk *desk, struct message *message)
         is_answered = answer_plot(desk, job, &err);
     else if (job->call == SERVE_WAVE)
         is_answered = answer_wave(desk, job, &err);
+    else if (job->call == SERVE_REPORT || job->call == SERVE_REPORT_STRIKE)
+        is_answered = answer_report(desk, job, &err);
     else if (job->call == SERVE_RECENT)
         is_answered = answer_recent(desk, job, &err);
     else if (job->call == SERVE_LIST_INPUTS)

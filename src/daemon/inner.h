@@ -92,6 +92,7 @@ struct pipeline {
     struct fitter *fitter;
     struct keeper *keeper;
     char notice[512];
+    struct shelf shelf; /* part sheets; not changed once the server runs */
 
     /* All below: with the mutex held, for a moment only. */
     pthread_mutex_t mutex;

@@ -43,6 +43,12 @@ static void set_log(struct pipeline *pipeline, const char *path, const struct lo
     pipeline->series = 0;
 }
 
+static void set_judge(struct keeper *keeper)
+{
+    const struct log_judge judge = {keeper_write_judgement, keeper};
+    log_writer_set_judge(keeper->writer, &judge);
+}
+
 bool keeper_open(struct pipeline *pipeline, const char *path, struct error *err)
 {
     struct log_opening opening = {0};
@@ -55,6 +61,7 @@ bool keeper_open(struct pipeline *pipeline, const char *path, struct error *err)
     keeper->writer = open_writer(pipeline, path, &opening, err);
     if (keeper->writer == NULL)
         return false;
+    set_judge(keeper);
     memcpy(pipeline->notice, opening.notice, sizeof pipeline->notice);
     keeper->reader = log_reader_open(path, err);
     if (keeper->reader == NULL || !log_counts(keeper->reader, &counts, err))
@@ -67,6 +74,7 @@ void keeper_close(struct keeper *keeper)
 {
     if (keeper == NULL)
         return;
+    tally_done(&keeper->tally);
     log_reader_close(keeper->reader);
     log_writer_close(keeper->writer);
     free(keeper);
@@ -157,6 +165,7 @@ static bool append_strikes(struct keeper *keeper, size_t count, struct error *er
     int64_t ids[BATCH_MAX];
     if (entries == NULL)
         return error_set(err, ERROR_MEMORY, "out of memory");
+    keeper_label_batch(keeper, count);
     for (size_t i = 0; i < count; i++) {
         entries[i].strike = keeper->batch[i]->strike;
         entries[i].reading = &keeper->batch[i]->reading;
@@ -164,6 +173,8 @@ static bool append_strikes(struct keeper *keeper, size_t count, struct error *er
         fill_context(keeper, keeper->batch[i], &entries[i].context);
     }
     bool is_kept = log_append(keeper->writer, entries, count, ids, err);
+    int64_t series = entries[0].context.series;
+    keeper->judge = NULL;
     free(entries);
     if (!is_kept)
         return false;
@@ -171,6 +182,9 @@ static bool append_strikes(struct keeper *keeper, size_t count, struct error *er
     keeper_refresh_counts(keeper);
     for (size_t i = 0; i < count; i++)
         publish_strike(keeper, ids[i], true);
+    keeper->strike_ns = clock_monotonic_ns();
+    keeper->is_silence_told = false;
+    keeper_tell_series(keeper, series);
     return true;
 }
 
@@ -265,9 +279,16 @@ static void take_input(struct keeper *keeper, const struct message *message)
     char name[LOG_NAME_MAX];
     int64_t id = 0;
     snprintf(name, sizeof name, "%.*s", (int)sizeof name - 1, view->info.name);
+    keeper->strike_ns = clock_monotonic_ns();
+    keeper->is_silence_told = false;
     const char *state = input_state_name(view->is_open ? view->info.state : INPUT_NONE);
     if (!log_input_event(keeper->writer, clock_utc_ms(), name, state, message->gap_ms, &err))
         set_failing(keeper, err.kind == ERROR_STORAGE, err.text);
+    if (view->info.state == INPUT_LOST && view->is_open && message->announces) {
+        char sentence[500];
+        snprintf(sentence, sizeof sentence, "The input %.190s is lost: %s", name, view->text);
+        keeper_notice(keeper, "input-lost", sentence, &err);
+    }
     if (view->is_open && log_read_open_series(keeper->reader, name, &id, &series, &err))
         keeper_set_series(keeper, id, &series);
     if (!message->announces)
@@ -301,6 +322,8 @@ static void switch_log(struct keeper *keeper, const char *path)
         struct log_writer *old_writer = keeper->writer;
         keeper->reader = reader;
         keeper->writer = writer;
+        set_judge(keeper);
+        tally_done(&keeper->tally);
         reader = old_reader;
         writer = old_writer;
     }
@@ -380,6 +403,7 @@ static void rest(struct keeper *keeper)
     else
         (void)log_idle_step(keeper->writer);
     keeper_refresh_counts(keeper);
+    keeper_look_around(keeper);
 }
 
 static int64_t next_deadline(const struct keeper *keeper)

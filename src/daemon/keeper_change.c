@@ -2,6 +2,7 @@
 #include "keeper.h"
 
 #include <stdio.h>
+#include <stdlib.h>
 #include <string.h>
 
 /* --- what people change --- */
@@ -41,9 +42,26 @@ static bool answer_strike(struct keeper *keeper, struct serve_job *job, struct e
     return true;
 }
 
+static int64_t series_of(struct keeper *keeper, int64_t id)
+{
+    struct log_stored stored = {0};
+    struct error err;
+    if (!log_read_strike(keeper->reader, id, &stored, &err))
+        return 0;
+    log_stored_done(&stored);
+    return stored.context.series;
+}
+
+static bool tell_series_of(struct keeper *keeper, int64_t id)
+{
+    keeper_tell_series(keeper, series_of(keeper, id));
+    return true;
+}
+
 static bool patch_strike(struct keeper *keeper, struct serve_job *job, struct error *err)
 {
     struct log_change change = {0};
+    const int64_t id = job->id; /* the job is gone once it is answered */
     if (job->has_note)
         change.note = job->note != NULL ? job->note : "";
     if (job->has_set_aside)
@@ -51,14 +69,14 @@ static bool patch_strike(struct keeper *keeper, struct serve_job *job, struct er
     change.reason = job->set_aside;
     return check_revision(keeper, job, err) &&
            log_change_strike(keeper->writer, job->id, &change, NULL, err) &&
-           answer_strike(keeper, job, err);
+           answer_strike(keeper, job, err) && tell_series_of(keeper, id);
 }
 
 static bool answer_series(struct keeper *keeper, struct serve_job *job, int64_t id, unsigned status,
                           struct error *err)
 {
     struct text text = {0};
-    if (!log_read_series_json(keeper->reader, id, &text, err)) {
+    if (!keeper_read_series(keeper, id, &text, err)) {
         text_done(&text);
         return false;
     }
@@ -98,10 +116,50 @@ static bool open_series(struct keeper *keeper, struct serve_job *job, struct err
     return answer_series(keeper, job, id, 201, err);
 }
 
+/* The number at the end of a specimen's name, counted up, as wide as it was. */
+static void count_up(const char *name, char out[LOG_NAME_MAX])
+{
+    size_t length = strlen(name), at = length;
+    while (at > 0 && length - at < 9 && name[at - 1] >= '0' && name[at - 1] <= '9')
+        at--;
+    if (at < length)
+        snprintf(out, LOG_NAME_MAX, "%.*s%0*lu", (int)at, name, (int)(length - at),
+                 strtoul(name + at, NULL, 10) + 1);
+    else
+        snprintf(out, LOG_NAME_MAX, "%.*s%s2", LOG_NAME_MAX - 4, name, length > 0 ? " " : "");
+}
+
+/* Closes the series and opens another one for the same part and the next specimen. */
+static bool next_specimen(struct keeper *keeper, struct serve_job *job, struct error *err)
+{
+    int64_t id = 0;
+    if (!tally_update(&keeper->tally, keeper->reader, &keeper->pipeline->shelf, job->id, err))
+        return false;
+    pthread_mutex_lock(&keeper->pipeline->mutex);
+    bool is_open = keeper->pipeline->series == job->id;
+    pthread_mutex_unlock(&keeper->pipeline->mutex);
+    if (!is_open)
+        return error_set(err, ERROR_CONFLICT,
+                         "series %lld is closed: open a new one for the next specimen",
+                         (long long)job->id);
+    struct log_series series = keeper->tally.about;
+    if (job->specimen != NULL)
+        snprintf(series.specimen, sizeof series.specimen, "%s", job->specimen);
+    else
+        count_up(keeper->tally.about.specimen, series.specimen);
+    if (!log_series_close(keeper->writer, job->id, clock_utc_ms(), err) ||
+        !log_series_create(keeper->writer, &series, clock_utc_ms(), &id, err))
+        return false;
+    keeper_set_series(keeper, id, &series);
+    return answer_series(keeper, job, id, 200, err);
+}
+
 static bool patch_series(struct keeper *keeper, struct serve_job *job, struct error *err)
 {
     struct pipeline *pipeline = keeper->pipeline;
     const struct log_series none = {0};
+    if (job->specimen != NULL || job->next_specimen)
+        return next_specimen(keeper, job, err);
     if (job->name != NULL && !log_series_rename(keeper->writer, job->id, job->name, err))
         return false;
     if (job->close && !log_series_close(keeper->writer, job->id, clock_utc_ms(), err))
@@ -172,9 +230,13 @@ void keeper_replace_reading(struct keeper *keeper, struct message *message)
 {
     struct serve_job *job = message->job;
     struct error err;
+    const int64_t id = job->id, series = series_of(keeper, id);
     message->job = NULL;
+    keeper_label_reading(keeper, series, &message->reading);
     if (!log_replace_reading(keeper->writer, job->id, &message->reading, message->settings,
                              WANE_VERSION, clock_utc_ms(), NULL, &err) ||
         !answer_strike(keeper, job, &err))
         serve_refuse(job, &err);
+    keeper->judge = NULL;
+    keeper_tell_series(keeper, series);
 }

@@ -44,8 +44,13 @@ static const struct setting settings[] = {
     {"fit", "modes_max", NULL, VALUE_WHOLE, AT(modes_max), 1, READING_MODES_MAX},
     {"serve", "listen", "--listen", VALUE_LISTEN, 0, 0, 0, 0},
     {"serve", "watchers_max", NULL, VALUE_WHOLE, AT(watchers_max), 1, 1000},
+    {"serve", "names", NULL, VALUE_TEXT, AT(names), 0, 0},
+    {"serve", "tls_key", NULL, VALUE_TEXT, AT(tls_key), 0, 0},
+    {"serve", "tls_certificate", NULL, VALUE_TEXT, AT(tls_certificate), 0, 0},
+    {"serve", "invite_valid_s", NULL, VALUE_NUMBER, AT(invite_valid_s), 0.001, 86400},
     {"log", "file", "--log", VALUE_TEXT, AT(log_path), 0, 0},
     {"log", "rejected_waves_per_hour", NULL, VALUE_WHOLE, AT(rejected_waves_per_hour), 0, 1e6},
+    {"watch", "silent_minutes", NULL, VALUE_NUMBER, AT(silent_minutes), 0, 1e5},
     {"log", "keep_samples_days", NULL, VALUE_NUMBER, AT(samples_days), 0, 1e5},
     {"log", "keep_strikes_days", NULL, VALUE_NUMBER, AT(strikes_days), 0, 1e5},
     {"log", "megabytes_max", NULL, VALUE_NUMBER, AT(log_megabytes), 0, 1e9},
@@ -62,7 +67,9 @@ const char *options_help(void)
            "  --input     the simulated bench, a recording (a path), or a card by its name\n"
            "  --fast      a recording as fast as it can be read\n"
            "  --channel   which channels to hear, from 1; the first without this word\n"
-           "  --listen    127.0.0.1:9263 without this word; port 0 takes a free one\n"
+           "  --listen    127.0.0.1:9263 without this word; port 0 takes a free one. 0.0.0.0:9263 "
+           "lets\n"
+           "              in from other machines whom `wane invite` invites, by TLS\n"
            "  --log       the log's file; else log.sqlite (demo.sqlite for the simulated bench)\n"
            "              under $XDG_STATE_HOME/wane\n"
            "  --config    settings; else $XDG_CONFIG_HOME/wane/waned.ini or /etc/wane/waned.ini\n";

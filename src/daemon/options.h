@@ -21,8 +21,11 @@ struct options {
     unsigned port;
     char log_path[LOG_PATH_MAX]; /* "": by log_default_path */
     double rejected_waves_per_hour;
+    double silent_minutes; /* without a strike, until that is told; 0: never */
     double samples_days, strikes_days, log_megabytes; /* 0: keep all */
     double watchers_max;
+    char names[1024], tls_key[LOG_PATH_MAX], tls_certificate[LOG_PATH_MAX]; /* "": none given */
+    double invite_valid_s;                                                  /* 0: 600 */
     double seed; /* of the simulated bench */
     struct detect_settings trigger;
     struct fit_settings fit;

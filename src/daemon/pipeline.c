@@ -28,6 +28,7 @@
 #include "pipeline.h"
 #include "inner.h"
 #include "recent.h"
+#include "serve/door.h"
 
 #include <fftw3.h>
 #include <stdarg.h>
@@ -106,6 +107,8 @@ static bool take_job(void *user, struct serve_job *job)
     case SERVE_PLOT:
     case SERVE_WAVE:
     case SERVE_RECENT:
+    case SERVE_REPORT:
+    case SERVE_REPORT_STRIKE:
         return send_job(pipeline->plots, job);
     case SERVE_LIST_INPUTS:
     case SERVE_READ_RECORDING:
@@ -129,17 +132,46 @@ static bool create_queues(struct pipeline *pipeline, struct error *err)
     return true;
 }
 
+/* Sheets beside the log come before those that came with the program. */
+static void set_shelf(struct pipeline *pipeline, const struct pipeline_places *places)
+{
+    char(*folders)[LOG_PATH_MAX] = pipeline->shelf.folders;
+    const char *slash = strrchr(pipeline->log_path, '/');
+    int length = slash != NULL ? (int)(slash - pipeline->log_path) : 0;
+    if (length < LOG_PATH_MAX - 8)
+        snprintf(folders[0], LOG_PATH_MAX, "%.*s/parts", slash != NULL ? length : 1,
+                 slash != NULL ? pipeline->log_path : ".");
+    if (places->parts_dir != NULL)
+        snprintf(folders[1], LOG_PATH_MAX, "%s", places->parts_dir);
+}
+
+static void tell_journal(void *user, const char *sentence)
+{
+    (void)user;
+    (void)fprintf(stderr, "waned: %s\n", sentence);
+}
+
 static bool start_server(struct pipeline *pipeline, const struct pipeline_places *places,
                          struct error *err)
 {
+    const struct options *options = &pipeline->options;
+    char state_dir[LOG_PATH_MAX];
+    bool has_state = door_default_folder(state_dir, sizeof state_dir, NULL);
+    set_shelf(pipeline, places);
     const struct serve_settings settings = {
         .address = pipeline->options.address,
         .port = pipeline->options.port,
         .web_dir = places->web_dir,
         .vendor_dir = places->vendor_dir,
         .log_path = pipeline->log_path,
+        .shelf = &pipeline->shelf,
         .version = WANE_VERSION,
-        .watchers_max = (unsigned)pipeline->options.watchers_max,
+        .watchers_max = (unsigned)options->watchers_max,
+        .state_dir = has_state ? state_dir : NULL,
+        .names = options->names,
+        .tls_key = options->tls_key,
+        .tls_certificate = options->tls_certificate,
+        .code_valid_s = options->invite_valid_s,
     };
     const struct serve_daemon daemon = {
         .user = pipeline,
@@ -147,6 +179,7 @@ static bool start_server(struct pipeline *pipeline, const struct pipeline_places
         .write_trigger = view_write_trigger,
         .take_job = take_job,
         .write_metrics = view_write_metrics,
+        .tell = tell_journal,
     };
     pipeline->server = serve_start(&settings, &daemon, err);
     return pipeline->server != NULL;
@@ -242,6 +275,11 @@ struct pipeline *pipeline_start(const struct options *options, const struct pipe
 const char *pipeline_url(const struct pipeline *pipeline)
 {
     return serve_url(pipeline->server);
+}
+
+const char *pipeline_fingerprint(const struct pipeline *pipeline)
+{
+    return serve_fingerprint(pipeline->server);
 }
 
 const char *pipeline_notice(const struct pipeline *pipeline)

@@ -8,6 +8,7 @@ struct pipeline;
 
 struct pipeline_places {
     const char *web_dir, *vendor_dir; /* NULL: none */
+    const char *parts_dir;            /* part sheets that came with the program */
 };
 
 /* Opens log, server and input, and starts all threads; signals must be blocked. NULL and *err on
@@ -15,6 +16,8 @@ struct pipeline_places {
 struct pipeline *pipeline_start(const struct options *options, const struct pipeline_places *places,
                                 struct error *err);
 const char *pipeline_url(const struct pipeline *pipeline);
+/* Of the certificate that pages from other machines see; NULL: there are none. */
+const char *pipeline_fingerprint(const struct pipeline *pipeline);
 /* A line for the service manager: what is listened to. */
 void pipeline_status(struct pipeline *pipeline, char *out, size_t out_size);
 /* Grows as long as the listener is alive: the watchdog's proof. */

@@ -190,7 +190,6 @@ void view_write_state(void *user, struct json_writer *json)
     write_series(json, pipeline->series, &pipeline->series_now);
     write_log(json, pipeline);
     json_null(json, "clock_u_ppm");
-    json_bool(json, "can_change", true);
     pthread_mutex_unlock(&pipeline->mutex);
 }
 

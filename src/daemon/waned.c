@@ -39,10 +39,12 @@ static struct pipeline_places find_places(void)
 {
     static const char *const vendors[] = {WANE_VENDOR_DIR, WANE_WEB_DIR "/vendor",
                                           WANE_WEB_DIR "/node_modules/uplot/dist"};
-    struct pipeline_places places = {.web_dir = WANE_INSTALLED_WEB_DIR};
+    struct pipeline_places places = {.web_dir = WANE_INSTALLED_WEB_DIR,
+                                     .parts_dir = WANE_INSTALLED_PARTS_DIR};
     if (!is_in_build_folder() && is_there(WANE_INSTALLED_WEB_DIR, "index.html"))
         return places;
     places.web_dir = WANE_WEB_DIR;
+    places.parts_dir = WANE_PARTS_DIR;
     for (size_t i = 0; i < sizeof vendors / sizeof vendors[0]; i++) {
         if (is_there(vendors[i], "uPlot.esm.js")) {
             places.vendor_dir = vendors[i];
@@ -101,6 +103,9 @@ static int run(const struct options *options)
     }
     if (pipeline_notice(pipeline) != NULL)
         (void)fprintf(stderr, "waned: %s\n", pipeline_notice(pipeline));
+    if (pipeline_fingerprint(pipeline) != NULL)
+        (void)fprintf(stderr, "waned: SHA-256 fingerprint of the certificate: %s\n",
+                      pipeline_fingerprint(pipeline));
     (void)printf("listening on %s\n", pipeline_url(pipeline));
     (void)fflush(stdout);
     (void)sd_notify(0, "READY=1");

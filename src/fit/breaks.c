@@ -4,9 +4,6 @@
 #include "fit/state.h"
 
 #include <math.h>
-#ifdef FIT_DEBUG
-#include <stdio.h>
-#endif
 #include <string.h>
 
 #define BLOCK_S      0.0025
@@ -230,23 +227,10 @@ static void look_before_begin(struct fit *fit, const struct lines *lines)
     size_t beyond = fit->begin + (to - from) < fit->end ? fit->begin + (to - from) : fit->end;
     explain(fit->workspace->y, fit->begin, beyond, &few, next.c);
     double jump = left_by(fit->workspace->y, from, to, fit->begin, &next) - (whole - explained);
-#ifdef FIT_DEBUG
-    fprintf(stderr, "LOOKBACK lines %u from %zu to %zu explained %.3g jump %.3g;", few.count,
-            from - fit->blow, to - fit->blow, explained / whole, jump / explained);
-    for (unsigned k = 0; k < few.count; k++)
-        fprintf(stderr, " %.1f Hz %.3g/s: %.3g -> %.3g (%.2f rad)",
-                cimag(few.p[k]) * 44100 / 6.2832, -creal(few.p[k]) * 44100, cabs(c[k]),
-                cabs(next.c[k] * cexp(few.p[k] * ((double)from - (double)fit->begin))),
-                carg(c[k] / (next.c[k] * cexp(few.p[k] * ((double)from - (double)fit->begin)))));
-    fprintf(stderr, "\n");
-#endif
     if (jump < JUMP_LEAST * JUMP_LEAST * explained)
         return;
     fit->break_kind = BREAK_HIT;
     fit->break_at = fit->begin;
-#ifdef FIT_DEBUG
-    fprintf(stderr, "BREAK before begin: %zu samples\n", fit->begin - fit->blow);
-#endif
 }
 
 /* The lines' poles and amplitudes on [from, to) alone; amplitudes at `from`. */

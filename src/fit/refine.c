@@ -3,9 +3,6 @@
 #include "fit/matrix.h"
 
 #include <math.h>
-#ifdef FIT_DEBUG2
-#include <stdio.h>
-#endif
 #include <string.h>
 
 /* Of moments.h: beyond it the moments are gathered anew. */
@@ -242,12 +239,6 @@ bool refine_poles(struct segment *segment, unsigned steps_max)
             is_better = evaluate(segment, strain_max, data_sums) &&
                         segment->explained >= explained_before * (1 - 1e-10);
         }
-#ifdef FIT_DEBUG2
-        fprintf(stderr, "    step %u damping %.1e size %.2e explained %.12g %s p0 %.6g %.6g K %u\n",
-                step, damping, size, segment->explained, is_better ? "ok" : "NO",
-                creal(segment->poles[0].p) * 48000, cimag(segment->poles[0].p) * 48000 / 6.2831853,
-                segment->pole_count);
-#endif
         if (!is_better) {
             memcpy(segment->poles, before, sizeof before);
             if (damping > 1e5 || !evaluate(segment, strain_max, data_sums))

@@ -60,6 +60,7 @@ struct fit {
     double noise_after;  /* variance in the window's last part over the noise before; 0: unknown */
     double misfit;       /* by how much what the modes leave exceeds the noise, 1: not at all */
     double misfit_share; /* of the ring's energy */
+    double lead_u;       /* the same, widened */
     double lead_noise_u; /* relative, of the lead's decay, before it is widened by its misfit */
     double unexplained;  /* share of the energy */
 };

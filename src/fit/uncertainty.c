@@ -94,6 +94,8 @@ void uncertainty_fill(struct fit *fit, struct reading *reading)
             fit->lead_noise_u =
                 sqrt(noise_density(&fit->plain, cimag(pole->p)) * fit->misfit * var_a) /
                 -creal(pole->p);
+        if (parameters[i].pole == fit->lead_pole)
+            fit->lead_u = fit->lead_noise_u * sqrt(widen);
         fill_from_pole(fit, pole, widen * var_a, widen * column[i + 1], widen * cov_aw,
                        &reading->modes[reading->mode_count++]);
     }

@@ -2,9 +2,6 @@
 #include "fit/state.h"
 
 #include <math.h>
-#ifdef FIT_DEBUG
-#include <stdio.h>
-#endif
 #include <string.h>
 
 /* Uncertainties by which early and late must differ: the two are read from two halves only, and
@@ -16,7 +13,8 @@
 #define CROWD_UNEXPLAINED 0.2
 /* Under it a mode drowns in each single sample: what else is in the noise nobody can tell. */
 #define DROWNED_DB     (-3.0)
-#define RESTLESS_SHARE 0.02
+#define RESTLESS_SHARE 0.01
+#define VAGUE_U        0.02
 
 static void add(struct reading *reading, enum reason reason, enum verdict verdict)
 {
@@ -210,11 +208,6 @@ static void judge_curvature(struct fit *fit, struct reading *reading)
     double a = -creal(fit->segment->poles[fit->lead_pole].p) * rate;
     double w = cimag(fit->segment->poles[fit->lead_pole].p);
     double moved = fabs(cimag(lead->early - lead->late));
-#ifdef FIT_DEBUG
-    fprintf(stderr,
-            "EARLYLATE a %.4g early %.4g late %.4g u %.3g  f move %.3g ppm u %.3g misfit %.3g\n", a,
-            early, late, lead->u_a * rate, moved / w * 1e6, lead->u_w / w * 1e6, fit->misfit);
-#endif
     bool is_bent = fabs(early - late) > SURE * lead->u_a * rate &&
                    fabs(early - late) > fit->settings.not_exponential * a;
     /* A bent input is looked for below that, too: its harmonics give it away. */
@@ -289,7 +282,9 @@ void verdict_judge(struct fit *fit, struct reading *reading)
         judge_curvature(fit, reading);
         judge_steering(fit, reading);
     }
-    if (is_full && fit->unresolved_w <= 0)
+    /* A lead that its own misfit leaves vague stands for more than one mode. */
+    bool is_vague = fit->misfit > 1.5 && fit->lead_u > VAGUE_U;
+    if ((is_full || is_vague) && fit->unresolved_w <= 0)
         fit->unresolved_w = 2 * WANE_PI * reading->modes[0].f_hz / fit->strike->rate_hz;
     if (fit->unresolved_w > 0) {
         reading->why.near_hz = fit->unresolved_w * fit->strike->rate_hz / (2 * WANE_PI);

@@ -5,9 +5,6 @@
 #include "fit/matrix.h"
 
 #include <math.h>
-#ifdef FIT_DEBUG2
-#include <stdio.h>
-#endif
 #include <string.h>
 
 /* Least variance a sample: the grain of 24-bit samples, step^2 / 12. */
@@ -338,10 +335,6 @@ static bool find_clean_onset(struct fit *fit, size_t at, size_t block)
     size_t to = at + 2 * block < fit->end ? at + 2 * block : fit->end;
     double excess = 0;
     size_t onset = change_point(fit, from, to, &excess);
-#ifdef FIT_DEBUG2
-    fprintf(stderr, "  clean? at %zu from %zu to %zu onset %zu excess %.2f\n", at, from, to, onset,
-            excess);
-#endif
     if (onset <= from || onset >= to || excess > 1 + 5 * sqrt(2.0 / 16))
         return false;
     fit->onset = (double)onset - 0.5;
@@ -373,11 +366,6 @@ enum walk window_walk_back(struct fit *fit)
     while (at >= least + block) {
         double middle = (double)at - (double)block / 2 - (double)fit->begin;
         double predicted = prediction_variance(segment, parameters, n, scale, density, middle);
-#ifdef FIT_DEBUG2
-        fprintf(stderr, "  walk at %zu pred/noise %.3g ring %.3g silence %.3g limit %.3g\n", at,
-                predicted / noise, mean_square(fit, at - block, block, true) / noise,
-                mean_square(fit, at - block, block, false) / noise, limit);
-#endif
         bool fits_silence = mean_square(fit, at - block, block, false) < limit * noise;
         if (fits_silence && find_clean_onset(fit, at, block))
             return WALK_CLEAN;

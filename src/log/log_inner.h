@@ -10,6 +10,7 @@ struct log_writer {
     int lock_fd; /* of PATH.lock: one writer; -1 when not taken */
     int rejected_waves_per_hour;
     char token[LOG_TOKEN_MAX];
+    struct log_judge judge;
 };
 
 struct log_reader {

@@ -23,8 +23,13 @@ static void packed_done(struct packed *packed)
     text_done(&packed->wave);
 }
 
-static bool pack_fit(const struct strike *strike, const struct reading *reading,
-                     struct packed *packed, struct error *err)
+void log_writer_set_judge(struct log_writer *writer, const struct log_judge *judge)
+{
+    writer->judge = *judge;
+}
+
+static bool pack_fit(const struct log_judge *judge, const struct strike *strike,
+                     const struct reading *reading, struct packed *packed, struct error *err)
 {
     text_clear(&packed->fit);
     text_clear(&packed->reading);
@@ -32,6 +37,8 @@ static bool pack_fit(const struct strike *strike, const struct reading *reading,
     struct json_writer json = {.text = &packed->reading};
     json_open_object(&json, NULL);
     json_reading(&json, strike, reading);
+    if (judge->write != NULL)
+        judge->write(judge->user, &json, reading);
     json_close_object(&json);
     if (packed->fit.failed || packed->reading.failed)
         return error_set(err, ERROR_MEMORY, "no memory to store a reading");
@@ -188,7 +195,7 @@ static bool append_entry(struct log_writer *writer, const struct log_entry *entr
     int64_t recipe = 0;
     bool has_samples = false;
     if (!pack_head(entry->strike, packed, err) ||
-        !pack_fit(entry->strike, entry->reading, packed, err) ||
+        !pack_fit(&writer->judge, entry->strike, entry->reading, packed, err) ||
         !wants_samples(writer, entry, &has_samples, err) || !next_revision(db, &revision, err) ||
         !recipe_id(db, entry->context.settings, entry->context.version, &recipe, err))
         return false;
@@ -298,7 +305,8 @@ bool log_replace_reading(struct log_writer *writer, int64_t id, const struct rea
     int64_t recipe = 0;
     if (!sql_begin(db, err))
         return false;
-    bool is_good = read_head(db, id, &strike, err) && pack_fit(&strike, reading, &packed, err) &&
+    bool is_good = read_head(db, id, &strike, err) &&
+                   pack_fit(&writer->judge, &strike, reading, &packed, err) &&
                    keep_as_history(db, id, now_ms, err) && next_revision(db, &revision, err) &&
                    recipe_id(db, settings, version, &recipe, err) &&
                    update_reading(db, id, reading, &packed, recipe, revision, err);

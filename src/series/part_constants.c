@@ -158,3 +158,21 @@ void constants_write_json(struct json_writer *json, const char *key,
     }
     json_close_array(json);
 }
+
+struct measured constant_for_people(const struct part_constant *constant, const char **out_unit)
+{
+    static const struct {
+        const char *unit, *shown;
+        double scale;
+    } prefixes[] = {{"Pa", "GPa", 1e-9}, {"H", "mH", 1e3}, {"F", "nF", 1e9}};
+    struct measured result = constant->constant.result;
+    *out_unit = constant->unit;
+    for (size_t i = 0; i < sizeof prefixes / sizeof prefixes[0]; i++) {
+        if (strcmp(constant->unit, prefixes[i].unit) != 0)
+            continue;
+        *out_unit = prefixes[i].shown;
+        result.value *= prefixes[i].scale;
+        result.u *= prefixes[i].scale;
+    }
+    return result;
+}

@@ -26,6 +26,7 @@ void api_get_state(struct exchange *exchange)
     json_integer(&json, "watchers", stream_hub_watchers(server->hub));
     json_integer(&json, "watchers_max", server->settings.watchers_max);
     server->daemon.write_state(server->daemon.user, &json);
+    json_bool(&json, "can_change", exchange->can_change);
     json_close_object(&json);
     answer_json(exchange, 200);
 }

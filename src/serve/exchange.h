@@ -18,7 +18,7 @@
 #define METHOD_PATCH 8u
 
 /* What a call takes in its body. */
-enum body_kind { BODY_NONE, BODY_JSON, BODY_FILE };
+enum body_kind { BODY_EMPTY, BODY_JSON, BODY_FILE };
 
 struct exchange;
 struct json_t;
@@ -47,7 +47,7 @@ struct answer {
     struct MHD_Response *response; /* instead of the body */
     struct {
         const char *name; /* static */
-        char value[128];
+        char value[192];
     } headers[ANSWER_HEADERS_MAX];
     unsigned header_count;
 };
@@ -58,6 +58,7 @@ struct exchange {
     const struct route *route;
     const char *path; /* decoded; borrowed from MHD for the current call only */
     bool is_head;
+    bool can_change;           /* else only look; set by guard_door */
     enum exchange_state state; /* under server->jobs_mutex once it is WAITING */
     int64_t id;
     char name[SERVE_NAME_MAX + 1];
@@ -75,6 +76,7 @@ struct exchange {
 struct stream_hub;
 struct assets;
 struct log_reader;
+struct door;
 
 struct server {
     struct serve_settings settings; /* its strings are copies of our own */
@@ -82,8 +84,10 @@ struct server {
     struct MHD_Daemon *mhd;
     struct stream_hub *hub;
     struct assets *assets;
+    struct door *door;      /* NULL: on the loopback, without TLS */
     struct log_reader *log; /* the HTTP thread's own: use server_log */
-    char address[64], url[96];
+    struct tally tally;     /* the series that was asked for last; HTTP thread only */
+    char address[64], url[320];
     char web_dir[4096], vendor_dir[4096], log_path[4096], version[32];
     unsigned port;
     int64_t started_ns;
@@ -119,6 +123,11 @@ const char *exchange_header(struct exchange *exchange, const char *name);
 bool guard_host(struct exchange *exchange);
 /* Not from another site's page. */
 bool guard_origin(struct exchange *exchange, unsigned method);
+/* Not too many wrong tries from this peer; counts one more, and tells the daemon. Need a door. */
+bool guard_tries(struct exchange *exchange);
+void guard_note_wrong(struct exchange *exchange, const char *what);
+/* Off the loopback: invited, and to what. Needs exchange->route. */
+bool guard_door(struct exchange *exchange, unsigned method);
 /* The two below need exchange->route. */
 bool guard_content_type(struct exchange *exchange);
 bool guard_length(struct exchange *exchange);
@@ -163,6 +172,8 @@ const struct route *route_find(struct exchange *exchange, unsigned method);
 
 /* --- handlers, one file a topic --- */
 void api_get_state(struct exchange *exchange);
+void api_get_join(struct exchange *exchange);
+void join_cookie_name(const struct server *server, char *out, size_t out_size);
 void api_get_healthz(struct exchange *exchange);
 void api_get_metrics(struct exchange *exchange);
 void api_get_stream(struct exchange *exchange);
@@ -176,6 +187,8 @@ void api_reread_strike(struct exchange *exchange);
 void api_list_series(struct exchange *exchange);
 void api_open_series(struct exchange *exchange);
 void api_get_series(struct exchange *exchange);
+void api_get_series_report(struct exchange *exchange);
+void api_get_strike_report(struct exchange *exchange);
 void api_patch_series(struct exchange *exchange);
 void api_list_parts(struct exchange *exchange);
 void api_get_part(struct exchange *exchange);

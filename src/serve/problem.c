@@ -7,6 +7,7 @@ const char *problem_title(unsigned status)
         const char *title;
     } titles[] = {
         {400, "Bad Request"},
+        {401, "Unauthorized"},
         {403, "Forbidden"},
         {404, "Not Found"},
         {405, "Method Not Allowed"},
@@ -17,6 +18,7 @@ const char *problem_title(unsigned status)
         {421, "Misdirected Request"},
         {422, "Unprocessable Content"},
         {428, "Precondition Required"},
+        {429, "Too Many Requests"},
         {500, "Internal Server Error"},
         {503, "Service Unavailable"},
     };

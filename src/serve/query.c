@@ -1,6 +1,6 @@
 #include "serve/exchange.h"
 
-/* The one file that knows libjansson, whose names these are. */
+/* libjansson has functions of these names (text.h). */
 #undef json_string
 #undef json_integer
 #undef json_null

@@ -8,35 +8,38 @@
 
 /* Every call there is. The page's own files are found by assets_has. */
 static const struct route routes[] = {
-    {"/healthz", api_get_healthz, METHOD_GET, BODY_NONE},
-    {"/metrics", api_get_metrics, METHOD_GET, BODY_NONE},
-    {API "/state", api_get_state, METHOD_GET, BODY_NONE},
-    {API "/stream", api_get_stream, METHOD_GET, BODY_NONE},
-    {API "/strikes", api_list_strikes, METHOD_GET, BODY_NONE},
-    {API "/strikes/ID", api_get_strike, METHOD_GET, BODY_NONE},
+    {"/healthz", api_get_healthz, METHOD_GET, BODY_EMPTY},
+    {"/join", api_get_join, METHOD_GET, BODY_EMPTY},
+    {"/metrics", api_get_metrics, METHOD_GET, BODY_EMPTY},
+    {API "/state", api_get_state, METHOD_GET, BODY_EMPTY},
+    {API "/stream", api_get_stream, METHOD_GET, BODY_EMPTY},
+    {API "/strikes", api_list_strikes, METHOD_GET, BODY_EMPTY},
+    {API "/strikes/ID", api_get_strike, METHOD_GET, BODY_EMPTY},
     {API "/strikes/ID", api_patch_strike, METHOD_PATCH, BODY_JSON},
-    {API "/strikes/ID/wave", api_get_wave, METHOD_GET, BODY_NONE},
-    {API "/strikes/ID/plot", api_get_plot, METHOD_GET, BODY_NONE},
+    {API "/strikes/ID/wave", api_get_wave, METHOD_GET, BODY_EMPTY},
+    {API "/strikes/ID/plot", api_get_plot, METHOD_GET, BODY_EMPTY},
     {API "/strikes/ID/reread", api_reread_strike, METHOD_POST, BODY_JSON},
-    {API "/series", api_list_series, METHOD_GET, BODY_NONE},
+    {API "/series", api_list_series, METHOD_GET, BODY_EMPTY},
     {API "/series", api_open_series, METHOD_POST, BODY_JSON},
-    {API "/series/ID", api_get_series, METHOD_GET, BODY_NONE},
+    {API "/series/ID", api_get_series, METHOD_GET, BODY_EMPTY},
+    {API "/series/ID/report", api_get_series_report, METHOD_GET, BODY_EMPTY},
+    {API "/strikes/ID/report", api_get_strike_report, METHOD_GET, BODY_EMPTY},
     {API "/series/ID", api_patch_series, METHOD_PATCH, BODY_JSON},
-    {API "/parts", api_list_parts, METHOD_GET, BODY_NONE},
-    {API "/parts/NAME", api_get_part, METHOD_GET, BODY_NONE},
+    {API "/parts", api_list_parts, METHOD_GET, BODY_EMPTY},
+    {API "/parts/NAME", api_get_part, METHOD_GET, BODY_EMPTY},
     {API "/parts/NAME", api_put_part, METHOD_PUT, BODY_JSON},
-    {API "/inputs", api_list_inputs, METHOD_GET, BODY_NONE},
+    {API "/inputs", api_list_inputs, METHOD_GET, BODY_EMPTY},
     {API "/input", api_put_input, METHOD_PUT, BODY_JSON},
-    {API "/trigger", api_get_trigger, METHOD_GET, BODY_NONE},
+    {API "/trigger", api_get_trigger, METHOD_GET, BODY_EMPTY},
     {API "/trigger", api_put_trigger, METHOD_PUT, BODY_JSON},
     {API "/recordings", api_read_recording, METHOD_POST, BODY_FILE},
-    {API "/recent.wav", api_get_recent, METHOD_GET, BODY_NONE},
+    {API "/recent.wav", api_get_recent, METHOD_GET, BODY_EMPTY},
     {API "/measurements", api_add_measurement, METHOD_POST, BODY_JSON},
-    {API "/export.csv", api_export_csv, METHOD_GET, BODY_NONE},
-    {API "/export.json", api_export_json, METHOD_GET, BODY_NONE},
+    {API "/export.csv", api_export_csv, METHOD_GET, BODY_EMPTY},
+    {API "/export.json", api_export_json, METHOD_GET, BODY_EMPTY},
 };
 
-static const struct route asset_route = {"/", api_get_asset, METHOD_GET, BODY_NONE};
+static const struct route asset_route = {"/", api_get_asset, METHOD_GET, BODY_EMPTY};
 
 static bool parse_id(const char *text, size_t length, int64_t *out_id)
 {

@@ -1,4 +1,5 @@
 #include "wane/serve.h"
+#include "serve/door.h"
 #include "serve/exchange.h"
 #include "wane/clock.h"
 #include "wane/log.h"
@@ -29,19 +30,21 @@ static void add_header(struct MHD_Response *response, const char *name, const ch
 
 static void add_common_headers(struct MHD_Response *response, const struct answer *answer)
 {
-    bool has_cache_control = false;
+    bool has_cache_control = false, has_policy = false;
     add_header(response, "Content-Type", answer->content_type);
     for (unsigned i = 0; i < answer->header_count; i++) {
         add_header(response, answer->headers[i].name, answer->headers[i].value);
+        has_policy |= strcmp(answer->headers[i].name, "Content-Security-Policy") == 0;
         has_cache_control |= strcmp(answer->headers[i].name, "Cache-Control") == 0;
     }
     if (!has_cache_control)
         add_header(response, "Cache-Control", "no-store");
     add_header(response, "X-Content-Type-Options", "nosniff");
-    add_header(response, "Content-Security-Policy",
-               "default-src 'none'; script-src 'self'; style-src 'self'; img-src 'self' data:; "
-               "connect-src 'self'; worker-src 'self'; manifest-src 'self'; base-uri 'none'; "
-               "form-action 'none'; frame-ancestors 'none'");
+    if (!has_policy)
+        add_header(response, "Content-Security-Policy",
+                   "default-src 'none'; script-src 'self'; style-src 'self'; img-src 'self' data:; "
+                   "connect-src 'self'; worker-src 'self'; manifest-src 'self'; base-uri 'none'; "
+                   "form-action 'none'; frame-ancestors 'none'");
     add_header(response, "Referrer-Policy", "no-referrer");
     add_header(response, "Cross-Origin-Opener-Policy", "same-origin");
     add_header(response, "Cross-Origin-Resource-Policy", "same-origin");
@@ -123,7 +126,7 @@ static bool begin_exchange(struct exchange *exchange, const char *method_word)
     if (!guard_host(exchange))
         return false;
     exchange->route = route_find(exchange, method);
-    if (exchange->route == NULL || !guard_origin(exchange, method))
+    if (exchange->route == NULL || !guard_origin(exchange, method) || !guard_door(exchange, method))
         return false;
     const char *if_match = exchange_header(exchange, "If-Match");
     if (if_match != NULL)
@@ -272,9 +275,8 @@ static bool copy_setting(char *out, size_t out_size, const char *value, struct e
     return true;
 }
 
-/* Off the loopback there is no door yet: TLS and a token are needed for one. */
 static bool parse_address(const char *address, unsigned port, struct sockaddr_storage *out,
-                          struct error *err)
+                          bool *out_is_loopback, struct error *err)
 {
     struct sockaddr_in v4 = {.sin_family = AF_INET, .sin_port = htons((uint16_t)port)};
     struct sockaddr_in6 v6 = {.sin6_family = AF_INET6, .sin6_port = htons((uint16_t)port)};
@@ -289,13 +291,48 @@ static bool parse_address(const char *address, unsigned port, struct sockaddr_st
         return error_set(err, ERROR_USAGE,
                          "listen %s: not an address; give one like 127.0.0.1:9263", address);
     }
-    if (!is_loopback)
-        return error_set(err, ERROR_USAGE,
-                         "listen %s: only 127.0.0.1 and ::1 are served; from another machine use "
-                         "an SSH tunnel: ssh -L 9263:127.0.0.1:9263 THIS-MACHINE, then open "
-                         "http://127.0.0.1:9263/ there",
-                         address);
+    *out_is_loopback = is_loopback;
     return true;
+}
+
+/* Off the loopback nothing is served without TLS and invitations. */
+static bool open_door(struct server *server, struct error *err)
+{
+    const struct serve_settings *settings = &server->settings;
+    const struct door_settings wanted = {.folder = settings->state_dir,
+                                         .address = server->address,
+                                         .names = settings->names,
+                                         .tls_key = settings->tls_key,
+                                         .tls_certificate = settings->tls_certificate,
+                                         .code_valid_s = settings->code_valid_s};
+    if (settings->state_dir == NULL)
+        return error_set(err, ERROR_USAGE,
+                         "listen %s: other machines need TLS and invitations, and there is no "
+                         "folder for them; or use an SSH tunnel: ssh -L 9263:127.0.0.1:9263 "
+                         "THIS-MACHINE",
+                         server->address);
+    if (MHD_is_feature_supported(MHD_FEATURE_TLS) != MHD_YES)
+        return error_set(err, ERROR_USAGE, "listen %s: this libmicrohttpd has no TLS",
+                         server->address);
+    server->door = door_open(&wanted, err);
+    return server->door != NULL;
+}
+
+/* What TLS adds to MHD's options. TLS 1.2 and up (RFC 8996). */
+static void list_tls_options(const struct server *server, struct MHD_OptionItem *out)
+{
+    size_t count = 0;
+    if (server->door != NULL) {
+        union {
+            const char *text;
+            void *pointer; /* MHD only reads what it points to */
+        } key = {.text = door_key(server->door)}, pem = {.text = door_certificate(server->door)},
+          words = {.text = "NORMAL:-VERS-ALL:+VERS-TLS1.3:+VERS-TLS1.2"};
+        out[count++] = (struct MHD_OptionItem){MHD_OPTION_HTTPS_MEM_KEY, 0, key.pointer};
+        out[count++] = (struct MHD_OptionItem){MHD_OPTION_HTTPS_MEM_CERT, 0, pem.pointer};
+        out[count++] = (struct MHD_OptionItem){MHD_OPTION_HTTPS_PRIORITIES, 0, words.pointer};
+    }
+    out[count] = (struct MHD_OptionItem){MHD_OPTION_END, 0, NULL};
 }
 
 static int open_listener(const struct sockaddr_storage *address, const char *shown, unsigned port,
@@ -346,7 +383,10 @@ static unsigned port_of(int fd)
 static bool start_http(struct server *server, struct error *err)
 {
     struct sockaddr_storage address = {0};
-    if (!parse_address(server->settings.address, server->settings.port, &address, err))
+    bool is_loopback = false;
+    if (!parse_address(server->settings.address, server->settings.port, &address, &is_loopback,
+                       err) ||
+        (!is_loopback && !open_door(server, err)))
         return false;
     int fd = open_listener(&address, server->settings.address, server->settings.port, err);
     if (fd < 0)
@@ -355,13 +395,22 @@ static bool start_http(struct server *server, struct error *err)
     server->port = port_of(fd);
     snprintf(server->url, sizeof server->url, is_v6 ? "http://[%s]:%u/" : "http://%s:%u/",
              server->address, server->port);
+    if (server->door != NULL &&
+        !door_set_port(server->door, server->port, server->url, sizeof server->url, err)) {
+        close(fd);
+        return false;
+    }
+    struct MHD_OptionItem tls[4];
+    list_tls_options(server, tls);
     unsigned connections = server->settings.watchers_max + CONNECTIONS_BESIDE_WATCHERS;
     server->mhd = MHD_start_daemon(
-        MHD_USE_EPOLL_INTERNAL_THREAD | MHD_ALLOW_SUSPEND_RESUME, (uint16_t)server->port, NULL,
-        NULL, answer_request, server, MHD_OPTION_LISTEN_SOCKET, fd, MHD_OPTION_CONNECTION_LIMIT,
-        connections, MHD_OPTION_CONNECTION_TIMEOUT, TIMEOUT_S, MHD_OPTION_STRICT_FOR_CLIENT, 1,
-        MHD_OPTION_UNESCAPE_CALLBACK, unescape, NULL, MHD_OPTION_NOTIFY_COMPLETED, end_request,
-        NULL, MHD_OPTION_NOTIFY_CONNECTION, begin_connection, NULL, MHD_OPTION_END);
+        MHD_USE_EPOLL_INTERNAL_THREAD | MHD_ALLOW_SUSPEND_RESUME |
+            (server->door != NULL ? MHD_USE_TLS : 0u),
+        (uint16_t)server->port, NULL, NULL, answer_request, server, MHD_OPTION_LISTEN_SOCKET, fd,
+        MHD_OPTION_CONNECTION_LIMIT, connections, MHD_OPTION_CONNECTION_TIMEOUT, TIMEOUT_S,
+        MHD_OPTION_STRICT_FOR_CLIENT, 1, MHD_OPTION_UNESCAPE_CALLBACK, unescape, NULL,
+        MHD_OPTION_NOTIFY_COMPLETED, end_request, NULL, MHD_OPTION_NOTIFY_CONNECTION,
+        begin_connection, NULL, MHD_OPTION_ARRAY, tls, MHD_OPTION_END);
     if (server->mhd == NULL) {
         close(fd);
         return error_set(err, ERROR_DEVICE, "the HTTP server did not start: %s", strerror(errno));
@@ -373,6 +422,8 @@ static void destroy_server(struct server *server)
 {
     stream_hub_destroy(server->hub);
     assets_destroy(server->assets);
+    door_close(server->door);
+    tally_done(&server->tally);
     log_reader_close(server->log);
     pthread_cond_destroy(&server->jobs_done);
     pthread_mutex_destroy(&server->jobs_mutex);
@@ -426,6 +477,11 @@ struct server *serve_start(const struct serve_settings *settings, const struct s
 const char *serve_url(const struct server *server)
 {
     return server->url;
+}
+
+const char *serve_fingerprint(const struct server *server)
+{
+    return server->door != NULL ? door_fingerprint(server->door) : NULL;
 }
 
 void serve_quiet(struct server *server)
@@ -482,6 +538,7 @@ struct log_reader *server_log(struct server *server, struct error *err)
     server->is_log_changed = false;
     pthread_mutex_unlock(&server->jobs_mutex);
     if (is_changed || server->log == NULL) {
+        tally_done(&server->tally);
         log_reader_close(server->log);
         server->log = log_reader_open(path, err);
     }
@@ -515,6 +572,9 @@ void serve_clear_forming(struct server *server)
 
 void serve_tick(struct server *server)
 {
+    /* Who was shut out does not come back; the others' browsers do, at once. */
+    if (server->door != NULL && door_take_revoked(server->door))
+        stream_hub_restart(server->hub);
     stream_hub_tick(server->hub);
 }
 

@@ -385,6 +385,7 @@ static void write_hello(struct exchange *exchange, struct watcher *watcher,
     json_integer(&json, "revision", counts->revision);
     json_open_object(&json, "state");
     server->daemon.write_state(server->daemon.user, &json);
+    json_bool(&json, "can_change", exchange->can_change);
     json_close_object(&json);
     json_close_object(&json);
     text_append(&watcher->out, ":ok\nretry: 2000\n\n");

@@ -86,9 +86,12 @@ test('a port in use', async () => {
   await daemon.stop();
 });
 
-test('an address off this machine is refused with the way that works', async () => {
-  await refused(['--listen', '0.0.0.0:9555'], 2, /ssh -L/);
-  await refused(['--listen', '[::]:9555'], 2, /ssh -L/);
+test('an address off this machine is refused without a place for its invitations', async () => {
+  const noFolder = path.join(makeFolder(), 'a-file'); // door.test.mjs has the rest
+  writeFileSync(noFolder, '');
+  const log = path.join(makeFolder(), 'log.sqlite');
+  for (const address of ['0.0.0.0:0', '[::]:0'])
+    await refused(['--listen', address, '--log', log], 1, /door\.lock.*invitations/, noFolder);
 });
 
 test('inputs that do not exist, or are none', async () => {

@@ -126,7 +126,7 @@ export default {
 
   // Series
   series: 'Series', noSeries: 'No series is open', seriesHelp: 'A series gathers repeat strikes on one part: mean, spread, and how many more are worth making.',
-  openSeries: 'Open a series', closeSeries: 'close the series', part: 'part', specimen: 'specimen', open: 'Open', partSheet: 'part sheet', none: 'none',
+  openSeries: 'Open a series', closeSeries: 'close the series', nextSpecimen: 'next specimen', report: 'report', part: 'part', specimen: 'specimen', open: 'Open', partSheet: 'part sheet', none: 'none',
   seriesSub: ['{n} strikes, {counted} counted', '{n} strikes'], meanF: 'mean f, Hz', meanQ: 'mean Q', spread: 's', ratio: 's / u', n: 'n',
   moreStrikes: ['more strikes to know {what} to {percent}', 'more strikes'], secondStarts: 'The second good strike starts the count.',
   goodSoFar: '{count} good so far', enoughShort: 'Enough: {what} is known to {percent}.', willNotChange: 'more strikes will not change a decision',

@@ -17,8 +17,8 @@ const KEPT_PLOTS = 12;
 export function mount(element, store) {
   element.setAttribute('aria-label', t('plots'));
   const decay = figureOf('decay', t('decayHead'), 14);
-  const spectrum = figureOf('spectrum', t('spectrumHead'), 10);
-  const trace = figureOf('trace', t('traceHead'), 10);
+  const spectrum = figureOf('spectrum', t('spectrumHead'), 16);
+  const trace = figureOf('trace', t('traceHead'), 16);
   const all = [decay, spectrum, trace];
   const swap = button(t('wideSpectrum'), { onclick: () => { isWideSpectrum = !isWideSpectrum; draw(); } });
   spectrum.acts.before(swap);
@@ -145,8 +145,11 @@ export function mount(element, store) {
     const d = decimal();
     const hasFit = strike.verdict !== 'rejected' || strike.modes?.length;
     show(decay, other ? compareSpec(plot, other, strike, pinned, lead, t, d) : hasFit ? decaySpec(plot, strike, lead, t, d) : null);
-    show(spectrum, (isWideSpectrum ? null : nearSpec(plot, strike, t, d)) ?? wideSpec(plot, strike, t, d));
-    show(trace, traceSpec(plot, strike, t, d, store.leadMode(strike)));
+    const near = nearSpec(plot, strike, t, d);
+    swap.hidden = !near;
+    const later = (/** @type {() => void} */ paint) => setTimeout(() => { if (drawn === key) paint(); }); // a task each: none is long
+    later(() => show(spectrum, (isWideSpectrum ? null : near) ?? wideSpec(plot, strike, t, d)));
+    later(() => show(trace, traceSpec(plot, strike, t, d, store.leadMode(strike))));
   }
 
   /** @param {ReturnType<typeof figureOf>} f @param {string} text */

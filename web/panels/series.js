@@ -63,7 +63,9 @@ export function mount(element, store) {
     if (series) {
       box.append(el('div', { class: 'buttons' },
         act('close', t('closeSeries'), async () => { await change('PATCH', `/series/${series.id}`, { close: true }); }),
-        act('another', t('compareWith'), chooseOther)));
+        series.specimen ? act('next', t('nextSpecimen'), async () => { await change('PATCH', `/series/${series.id}`, { next_specimen: true }); }) : '',
+        act('another', t('compareWith'), chooseOther),
+        el('a', { href: `/api/v1/series/${series.id}/report`, target: '_blank', text: t('report') })));
       return box;
     }
     if (!isOpening) {

@@ -291,6 +291,7 @@ export function makeCurve(uPlot, box, options) {
 export function tickTexts(ticks, d) {
   const numbers = ticks.filter((x) => x !== null);
   const step = numbers.length > 1 ? Math.abs(numbers[1] - numbers[0]) : 1;
-  const decimals = Math.max(0, -Math.floor(Math.log10(step) + 1e-9));
+  let decimals = 0;
+  while (decimals < 9 && Math.abs(step * 10 ** decimals - Math.round(step * 10 ** decimals)) > 1e-6 * step * 10 ** decimals) decimals++;
   return ticks.map((x) => (x === null ? '' : decimals ? level(x, d, decimals) : dress(String(Math.round(x)), d)));
 }

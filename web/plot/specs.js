@@ -219,7 +219,7 @@ export function wideSpec(plot, strike, t, d) {
   if (tone) marks.push({ kind: 'label', x0: tone.f_hz, y0: peakNear(s.f_hz, s.db, tone.f_hz) ?? tone.level_dbfs, text: t('hum'), colour: 'ink2', align: 'left' });
   const hum = tone ? significant(tone.f_hz, 3, d) + NARROW + 'Hz' : null;
   return {
-    sub: t('wideSpectrum'), caption: modes.length === 1 && !hum ? t('capWideOne') : t('capWide', { count: modes.length, hum }), x: s.f_hz,
+    sub: t('wideSpectrum'), caption: !modes.length ? t('noModes') : modes.length === 1 && !hum ? t('capWideOne') : t('capWide', { count: modes.length, hum }), x: s.f_hz,
     lines: [{ name: t('strike'), colour: 'trace', data: s.db, width: 1, fillTo: low }, ...(s.noise_db ? [{ name: t('noiseWord'), colour: 'edge', data: s.noise_db, width: 0.8, dash: [2, 2] }] : [])],
     xRange: [0, to], yRange: [low, high], xUnit: 'Hz', yUnit: t('dbfs'), xDigits: 5, yDigits: 1, marks,
   };
