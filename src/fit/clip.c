@@ -61,8 +61,10 @@ void clip_count(struct fit *fit)
 }
 
 /* A bent input leaves odd harmonics that are a third of what it takes from the fundamental (a cubic
- * bend: cos^3 = 3/4 cos + 1/4 cos 3). `loss`: share of the lead's early amplitude that is missing
- * by what its late part says. */
+ * bend: cos^3 = 3/4 cos + 1/4 cos 3) up to all of it (a flat top, in the limit of a light touch:
+ * 4/(3 pi) k (1 - k^2)^1.5 against 1 - 2/pi (asin k + k sqrt(1 - k^2))). A harmonic that is
+ * stronger than the loss has another cause. `loss`: share of the lead's early amplitude that is
+ * missing by what its late part says. */
 bool clip_is_bent(struct fit *fit, double loss)
 {
     const struct pole *lead = &fit->segment->poles[fit->lead_pole];
@@ -82,5 +84,5 @@ bool clip_is_bent(struct fit *fit, double loss)
     double harmonic = 2 * cabs(sum) / norm;
     double noise = 6 * noise_density(&fit->noise, w) / (double)count;
     return harmonic * harmonic > 16 * noise && harmonic > 0.08 * loss * cabs(lead->c) &&
-           harmonic < 1.5 * loss * cabs(lead->c) && harmonic > 0.002 * cabs(lead->c);
+           harmonic < 1.1 * loss * cabs(lead->c) && harmonic > 0.002 * cabs(lead->c);
 }

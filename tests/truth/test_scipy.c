@@ -34,7 +34,7 @@ static FILE *start_scipy(const struct strike *strike, const struct reading *read
     assert_int_equal(fwrite(strike->samples + begin, sizeof(float), end - begin, out), end - begin);
     assert_int_equal(fclose(out), 0);
     char command[2048];
-    int used = snprintf(command, sizeof command, PYTHON " %s/least_squares.py %s %.17g",
+    int used = snprintf(command, sizeof command, PYTHON " '%s/least_squares.py' %s %.17g",
                         TRUTH_FOLDER, path, strike->rate_hz);
     for (unsigned k = 0; k < reading->mode_count; k++)
         used += snprintf(command + used, sizeof command - (size_t)used, " %.12g %.12g",
