@@ -70,8 +70,10 @@ static unsigned take_count(struct source *source, unsigned bound)
 
 static struct source source_of(const void *bytes, size_t size, unsigned form)
 {
+    if (bytes == NULL)
+        return (struct source){.failed = true};
     struct source source = {.at = bytes, .end = (const unsigned char *)bytes + size};
-    if (bytes == NULL || take_integer(&source, 1) != form)
+    if (take_integer(&source, 1) != form)
         source.failed = true;
     return source;
 }
