@@ -287,7 +287,6 @@ void breaks_find(struct fit *fit)
     struct segment *segment = fit->segment;
     struct pole poles[POLES_MAX];
     unsigned pole_count = segment->pole_count;
-    double explained = segment->explained;
     memcpy(poles, segment->poles, sizeof poles);
     if (at > 0 && (double)(at - fit->blow) >= 0.005 * rate) {
         size_t left = at > from + reach ? at - reach : from;
@@ -305,9 +304,6 @@ void breaks_find(struct fit *fit)
             classify(fit, &before, left, at, before.c, after.c);
     }
     segment_begin(segment, y + fit->begin, fit->end - fit->begin);
-    segment->pole_count = pole_count;
-    segment->explained = explained;
-    memcpy(segment->poles, poles, sizeof poles);
-    memset(segment->has_moments, 0, sizeof segment->has_moments);
+    segment_restore(segment, poles, pole_count);
     refine_amplitudes(segment);
 }

@@ -248,9 +248,7 @@ static bool is_found_again(struct fit *fit, unsigned k)
         segment->y -= later;
         segment->frame_count += later;
     }
-    memcpy(segment->poles, kept, sizeof kept);
-    segment->pole_count = kept_count;
-    memset(segment->has_moments, 0, sizeof segment->has_moments);
+    segment_restore(segment, kept, kept_count);
     return is_same;
 }
 

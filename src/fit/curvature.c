@@ -107,8 +107,6 @@ void curvature_measure(struct fit *fit)
     }
     segment->y = y;
     segment->frame_count = frame_count;
-    segment->pole_count = pole_count;
-    memcpy(segment->poles, poles, sizeof poles);
-    memset(segment->has_moments, 0, sizeof segment->has_moments);
+    segment_restore(segment, poles, pole_count);
     refine_amplitudes(segment);
 }

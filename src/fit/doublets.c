@@ -38,13 +38,6 @@ static double doublet_score(struct fit *fit, unsigned k)
     return (creal(sum) * creal(sum) + cimag(sum) * cimag(sum)) / (density * norm);
 }
 
-static void restore(struct segment *segment, const struct pole *poles, unsigned count)
-{
-    memcpy(segment->poles, poles, count * sizeof *poles);
-    segment->pole_count = count;
-    memset(segment->has_moments, 0, sizeof segment->has_moments);
-}
-
 /* Tries to split pole k in several ways; keeps the best when it gains enough. */
 static bool try_split(struct fit *fit, unsigned k)
 {
@@ -59,7 +52,7 @@ static bool try_split(struct fit *fit, unsigned k)
         return false;
     memcpy(before, segment->poles, sizeof before);
     for (size_t i = 0; i < sizeof starts / sizeof starts[0]; i++) {
-        restore(segment, before, count);
+        segment_restore(segment, before, count);
         double a = -creal(before[k].p);
         double complex half = (starts[i][1] + J * starts[i][0]) * a / 2;
         if (!segment_add_pole(segment, POLE_RING, before[k].p + half))
@@ -73,10 +66,10 @@ static bool try_split(struct fit *fit, unsigned k)
     double density = noise_density(&fit->plain, cimag(before[k].p)) * fit->misfit;
     double gain = (best_explained - explained) / (2 * density);
     if (gain < log((double)segment->frame_count) + 8) {
-        restore(segment, before, count);
+        segment_restore(segment, before, count);
         return false;
     }
-    restore(segment, best, count + 1);
+    segment_restore(segment, best, count + 1);
     return true;
 }
 
@@ -95,7 +88,7 @@ static bool try_coupling(struct fit *fit, unsigned wanting)
     }
     memcpy(before, segment->poles, sizeof before);
     for (size_t i = 0; i < sizeof corners_hz / sizeof corners_hz[0]; i++) {
-        restore(segment, before, count);
+        segment_restore(segment, before, count);
         double a = 2 * WANE_PI * corners_hz[i] / fit->strike->rate_hz;
         if (segment_add_pole(segment, POLE_REAL, -a) && refine_poles(segment, 25) &&
             segment->explained > best_explained) {
@@ -107,13 +100,13 @@ static bool try_coupling(struct fit *fit, unsigned wanting)
     double gain = (best_explained - explained) / (2 * density);
     bool is_needed = gain > log((double)segment->frame_count) + 8;
     if (is_needed) {
-        restore(segment, best, count + 1);
+        segment_restore(segment, best, count + 1);
         refine_amplitudes(segment);
         candidates_residual(fit);
         is_needed = doublet_score(fit, wanting) < SCORE_LEAST;
     }
     if (!is_needed) {
-        restore(segment, before, count);
+        segment_restore(segment, before, count);
         refine_amplitudes(segment);
     }
     return is_needed;
@@ -194,7 +187,7 @@ static bool is_crowd(struct fit *fit, unsigned a, unsigned b)
                             cabs(segment->poles[count].c));
         is_third = third > 0.02 * size;
     }
-    restore(segment, before, count);
+    segment_restore(segment, before, count);
     refine_amplitudes(segment);
     return is_third;
 }
@@ -222,7 +215,7 @@ void doublets_resolve(struct fit *fit)
         }
         if (!is_split)
             fit->unresolved_w = cimag(before[wanting].p);
-        restore(segment, before, count);
+        segment_restore(segment, before, count);
         refine_amplitudes(segment);
         fit->is_curved[wanting] = true;
     }

@@ -41,6 +41,13 @@ void segment_remove_pole(struct segment *segment, unsigned index)
     segment->pole_count--;
 }
 
+void segment_restore(struct segment *segment, const struct pole *poles, unsigned count)
+{
+    memcpy(segment->poles, poles, count * sizeof *poles);
+    segment->pole_count = count;
+    memset(segment->has_moments, 0, sizeof segment->has_moments);
+}
+
 static void gather(struct segment *segment, unsigned k)
 {
     const struct pole *pole = &segment->poles[k];

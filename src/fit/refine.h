@@ -47,6 +47,9 @@ void segment_begin(struct segment *segment, const float *y, size_t frame_count);
 bool segment_add_pole(struct segment *segment, enum pole_kind kind, double complex p);
 void segment_remove_pole(struct segment *segment, unsigned index);
 
+/* Puts back poles [count] that a trial has changed; their moments are gathered anew when needed. */
+void segment_restore(struct segment *segment, const struct pole *poles, unsigned count);
+
 /* Solves all amplitudes for the poles as they stand. false when they are not independent. */
 bool refine_amplitudes(struct segment *segment);
 

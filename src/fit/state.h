@@ -43,7 +43,7 @@ struct fit {
     double onset;
     bool is_clean_onset;       /* the ring begins at the onset, no blow between */
     double unresolved_w;       /* 0: none */
-    unsigned lead_pole;        /* the strongest at the onset */
+    unsigned lead_pole;        /* the ring pole with most energy */
     bool is_curved[POLES_MAX]; /* the residual says that this pole is not all there is */
     struct curvature curvature[POLES_MAX];
     enum break_kind break_kind;
@@ -60,8 +60,8 @@ struct fit {
     double noise_after;  /* variance in the window's last part over the noise before; 0: unknown */
     double misfit;       /* by how much what the modes leave exceeds the noise, 1: not at all */
     double misfit_share; /* of the ring's energy */
-    double lead_u;       /* the same, widened */
     double lead_noise_u; /* relative, of the lead's decay, before it is widened by its misfit */
+    double lead_u;       /* the same, widened */
     double unexplained;  /* share of the energy */
 };
 
@@ -89,7 +89,7 @@ bool candidates_finish(struct fit *fit);
 void candidates_residual(struct fit *fit);
 
 /* Splits poles that want to be two. Sets unresolved_w where one does but the record cannot tell
- * how, and curved_pole where it is a decay that is no exponential. Needs a settled segment. */
+ * how, and is_curved where it is a decay that is no exponential. Needs a settled segment. */
 void doublets_resolve(struct fit *fit);
 
 /* Best heavily damped mode, or slow real decay (the input's AC coupling), of the residual, which it

@@ -90,12 +90,12 @@ void uncertainty_fill(struct fit *fit, struct reading *reading)
         double var_a = column[i], cov_aw = column[i + 1];
         matrix_inverse_column(segment->matrix, n, scale, i + 1, column);
         double widen = fit->misfit > 1.5 ? curvature_excess(fit, pole) : 1;
-        if (parameters[i].pole == fit->lead_pole)
+        if (parameters[i].pole == fit->lead_pole) {
             fit->lead_noise_u =
                 sqrt(noise_density(&fit->plain, cimag(pole->p)) * fit->misfit * var_a) /
                 -creal(pole->p);
-        if (parameters[i].pole == fit->lead_pole)
             fit->lead_u = fit->lead_noise_u * sqrt(widen);
+        }
         fill_from_pole(fit, pole, widen * var_a, widen * column[i + 1], widen * cov_aw,
                        &reading->modes[reading->mode_count++]);
     }
