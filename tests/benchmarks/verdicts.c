@@ -9,30 +9,35 @@
 
 #define STRIKES_MAX 64
 
-/* Share of wrong verdicts that the short run bears. The aim is 0.01 everywhere; 0.1 is what ten
- * scenes can tell. Where the verdicts are known to be weaker (DEVELOPERS.md, "What is weak") the
- * limit stands a little over today's share, so that it fails when it gets worse. "room" is one
- * scene in the short run, too few to judge: it is printed. */
-static double wrong_limit(const char *defect)
-{
-    static const struct {
-        const char *name;
-        double limit;
-    } weak[] = {{"room", 1.0},  {"keys", 0.4},     {"speech", 0.3},    {"bounce", 0.3},
-                {"glide", 0.3}, {"clip-low", 0.3}, {"clip-soft", 0.3}, {"gain-control", 0.3},
-                {"lost", 0.2},  {"gate", 0.3}};
-    for (size_t i = 0; i < sizeof weak / sizeof weak[0]; i++)
-        if (strcmp(weak[i].name, defect) == 0)
-            return weak[i].limit;
-    return 0.1;
-}
-
 /* What became of the scenes of one defect. */
 struct tally {
     unsigned scenes, right, named, good, strikes;
     unsigned reasons[REASON_COUNT];
     double worst_ms;
 };
+
+/* Share of wrong verdicts that the short run bears. The aim is 0.01 everywhere; 0.1 is what ten
+ * scenes can tell. Where the verdicts are known to be weaker (DEVELOPERS.md, "What is weak") the
+ * limit is today's share: one scene more that goes wrong fails. */
+static double wrong_limit(const char *defect)
+{
+    static const struct {
+        const char *name;
+        double limit;
+    } weak[] = {{"bounce", 0.2}, {"glide", 0.2}, {"speech", 0.2}, {"keys", 0.3}, {"room", 0.06}};
+    for (size_t i = 0; i < sizeof weak / sizeof weak[0]; i++)
+        if (strcmp(weak[i].name, defect) == 0)
+            return weak[i].limit;
+    return 0.1;
+}
+
+/* A minute of room noise is one scene with some fifty events in it: the short run judges those. */
+static double wrong_share(const struct defect *defect, const struct tally *tally)
+{
+    if (strcmp(defect->name, "room") == 0)
+        return tally->strikes > 0 ? (double)tally->good / tally->strikes : 0.0;
+    return 1.0 - (double)tally->right / tally->scenes;
+}
 
 static size_t take_windows(const struct scene *scene, const struct defect *defect,
                            bool through_detector, struct strike **strikes)
@@ -169,10 +174,10 @@ bool benchmark_verdicts(const struct benchmark_words *words)
         any = true;
         done = run_defect(&defects[i], words, workspace, &tally);
         print_tally(&defects[i], &tally);
-        double wrong = 1.0 - (double)tally.right / tally.scenes;
+        double wrong = wrong_share(&defects[i], &tally);
         double limit = wrong_limit(defects[i].name);
-        if (words->is_short && wrong > limit) {
-            printf("FAILED: %s: share of wrong verdicts is %.3f, limit %.1f\n", defects[i].name,
+        if (words->is_short && wrong > limit + 1e-9) {
+            printf("FAILED: %s: share of wrong verdicts is %.3f, limit %.2f\n", defects[i].name,
                    wrong, limit);
             within = false;
         }
